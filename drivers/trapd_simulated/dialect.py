@@ -1,0 +1,76 @@
+"""Numbers between the wire and the terminals: units of the RF level, and how a reply is dressed."""
+
+from __future__ import annotations
+
+import math
+
+from trapd_simulated.settings import Dialect
+
+_LOAD_OHM = 50.0
+_HERTZ = {"HZ": 1.0, "KHZ": 1e3, "MHZ": 1e6}
+_DISPLAY = {"HZ": "Hz", "KHZ": "kHz", "MHZ": "MHz", "VPK": "V", "VPP": "Vpp", "VRMS": "Vrms", "DBM": "dBm", "V": "V"}
+
+
+def level_to_volts(dialect: Dialect, displayed: float) -> float:
+    """Real volts zero to peak at the terminals for a level as the instrument displays it."""
+    match dialect.amplitude_unit:
+        case "VPP":
+            volts = displayed / 2.0
+        case "VRMS":
+            volts = displayed * math.sqrt(2.0)
+        case "DBM":
+            volts = math.sqrt(2.0 * _LOAD_OHM * 1e-3 * 10.0 ** (displayed / 10.0))  # P = V_peak^2 / (2 R)
+        case _:
+            volts = displayed
+    return volts * dialect.level_factor
+
+
+def volts_to_level(dialect: Dialect, volts: float) -> float:
+    """The inverse of `level_to_volts`; ``volts`` above 0 with DBM."""
+    volts /= dialect.level_factor
+    match dialect.amplitude_unit:
+        case "VPP":
+            return volts * 2.0
+        case "VRMS":
+            return volts / math.sqrt(2.0)
+        case "DBM":
+            return 10.0 * math.log10(volts**2 / (2.0 * _LOAD_OHM) / 1e-3)
+        case _:
+            return volts
+
+
+def quantise(value: float, resolution: float) -> float:
+    """The programmable value nearest to ``value``: a multiple of ``resolution``."""
+    return round(value / resolution) * resolution
+
+
+def least(value: float, resolution: float) -> float:
+    """The smallest programmable value that is not below ``value``."""
+    return math.ceil(value / resolution - 1e-9) * resolution
+
+
+def greatest(value: float, resolution: float) -> float:
+    """The largest programmable value that is not above ``value``."""
+    return math.floor(value / resolution + 1e-9) * resolution
+
+
+def number_reply(dialect: Dialect, header: str, unit: str, *values: float) -> str:
+    """``values`` as the dialect writes them: bare, with their unit behind, or with ``header`` in front."""
+    style = f".{dialect.digits}{'E' if dialect.numbers == 'NR3' else 'f'}"
+    behind = f" {_DISPLAY[unit]}" if dialect.replies == "unit" else ""
+    return _with_header(dialect, header, [f"{value + 0.0:{style}}{behind}" for value in values])
+
+
+def frequency_reply(dialect: Dialect, header: str, frequency_hz: float) -> str:
+    unit = dialect.frequency_unit
+    return number_reply(dialect, header, unit, frequency_hz / _HERTZ[unit])
+
+
+def state_reply(dialect: Dialect, header: str, *states: bool) -> str:
+    words = ("OFF", "ON") if dialect.output_words else ("0", "1")
+    return _with_header(dialect, header, [words[state] for state in states])
+
+
+def _with_header(dialect: Dialect, header: str, parts: list[str]) -> str:
+    text = ",".join(parts)
+    return f"{header} {text}" if dialect.replies == "header" else text

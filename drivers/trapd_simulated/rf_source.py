@@ -1,0 +1,185 @@
+"""A synthesizer with one output: a level that settles, a frequency that hops, a range relay, a protection latch."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import ClassVar
+
+from trapd_simulated.arguments import scales
+from trapd_simulated.clock import Clock, Timeline
+from trapd_simulated.dialect import (
+    frequency_reply,
+    greatest,
+    least,
+    level_to_volts,
+    number_reply,
+    quantise,
+    state_reply,
+    volts_to_level,
+)
+from trapd_simulated.errors import RackUseError, ScpiError
+from trapd_simulated.instrument import Call, Instrument, Query, Set
+from trapd_simulated.settings import RfSourceSettings
+
+
+@dataclass(frozen=True, kw_only=True)
+class Carrier:
+    """The law of the output from ``start_s`` on: dead until the relay has switched, then settling exponentially."""
+
+    start_s: float
+    frequency_hz: float
+    from_v: float
+    to_v: float  # zero to peak; 0 with the output off
+    settle_s: float
+    on: bool
+
+    def level_v(self, time_s: float) -> float:
+        """Volts zero to peak at the terminals."""
+        since_s = time_s - self.start_s
+        if since_s < 0.0:
+            return 0.0
+        if self.settle_s == 0.0:
+            return self.to_v
+        return self.to_v + (self.from_v - self.to_v) * math.exp(-since_s / self.settle_s)
+
+
+class RfSource(Instrument):
+    """Levels on the wire are in the dialect's unit, `Carrier` is in real volts zero to peak."""
+
+    settings: RfSourceSettings
+    PATTERNS: ClassVar = {
+        "frequency": ("[SOURce#]:FREQuency[:CW]", "[SOURce#]:FREQuency:FIXed"),
+        "level": ("[SOURce#]:VOLTage[:LEVel][:IMMediate][:AMPLitude]",),
+        "output": ("OUTPut#[:STATe]",),
+        "tripped": ("[SOURce#]:VOLTage:PROTection:TRIPped",),
+        "clear": ("[SOURce#]:VOLTage:PROTection:CLEar",),
+        "measure": ("MEASure[:SCALar][:VOLTage]:AC",),
+    }
+
+    def __init__(self, name: str, settings: RfSourceSettings, clock: Clock, seed: int) -> None:
+        super().__init__(name, settings, clock, seed)
+        self.after_change: Callable[[float], None] = lambda now_s: None  # what is driven learns when it changed
+        self._bias = self.random.uniform(-1.0, 1.0)
+        unit, resolution = self.dialect.amplitude_unit, settings.level_resolution
+        self._level_units = scales("DBM") if unit == "DBM" else scales("V") | scales(unit)
+        self._level_low = least(volts_to_level(self.dialect, settings.level_min_v), resolution)
+        self._level_high = greatest(volts_to_level(self.dialect, settings.level_max_v), resolution)
+        self._preset()
+        now_s = clock.now_s()
+        first = Carrier(
+            start_s=now_s,
+            frequency_hz=self._frequency_hz,
+            from_v=0.0,
+            to_v=0.0,
+            settle_s=settings.settle_s,
+            on=False,
+        )
+        self._carriers = Timeline(now_s, first)
+
+    def _preset(self) -> None:
+        self._frequency_hz = self.settings.frequency_min_hz
+        self._level = self._level_low
+        self._on = False
+        self._tripped = False
+
+    def commands(self) -> dict[str, tuple[Set | None, Query | None]]:
+        measure = (None, self._measure if self.dialect.measures else None)
+        return {
+            "frequency": (self._set_frequency, self._read_frequency),
+            "level": (self._set_level, self._read_level),
+            "output": (self._set_output, lambda call: state_reply(self.dialect, "OUTP", self._on)),
+            "tripped": (None, lambda call: state_reply(self.dialect, "VOLT:PROT:TRIP", self._tripped)),
+            "clear": (self._clear, None),
+            "measure": measure,
+        }
+
+    def carrier(self, time_s: float) -> Carrier:
+        """The law in force at rack time ``time_s``. Hold ``lock``."""
+        return self._carriers.at(time_s)
+
+    def advance(self, now_s: float) -> None:
+        """Nothing happens to a synthesizer by itself."""
+
+    def reset(self, now_s: float) -> None:
+        self._preset()
+        self._change(now_s)
+
+    def trip(self, channel: int) -> None:
+        if channel not in (0, 1):
+            raise RackUseError(f"{self.name} has one output, not a channel {channel}; nothing tripped")
+        with self.lock:
+            self._tripped, self._on = True, False
+            self._change(self.clock.now_s())
+
+    def _change(self, now_s: float, dead_s: float = 0.0) -> None:
+        """A new law for the values now set; a relay still switching goes on doing so."""
+        before = self._carriers.latest
+        start_s = max(now_s + dead_s, before.start_s)
+        law = Carrier(
+            start_s=start_s,
+            frequency_hz=self._frequency_hz,
+            from_v=before.level_v(now_s) if start_s <= now_s else 0.0,
+            to_v=level_to_volts(self.dialect, self._level) if self._on else 0.0,
+            settle_s=self.settings.settle_s,
+            on=self._on,
+        )
+        self._carriers.change(now_s, law)
+        self.after_change(now_s)
+
+    def _set_frequency(self, call: Call) -> None:
+        low, high = self.settings.frequency_min_hz, self.settings.frequency_max_hz
+        value = call.arguments.quantity(scales("HZ"), low, high, self.dialect.frequency_default_unit)
+        call.arguments.done()
+        self._suffix_one(call)
+        self._frequency_hz = quantise(value, self.settings.frequency_resolution_hz)
+        self._change(call.now_s)
+
+    def _read_frequency(self, call: Call) -> str:
+        self._suffix_one(call)
+        extreme = call.arguments.extreme(self.settings.frequency_min_hz, self.settings.frequency_max_hz)
+        return frequency_reply(self.dialect, "FREQ", self._frequency_hz if extreme is None else extreme)
+
+    def _set_level(self, call: Call) -> None:
+        value = call.arguments.quantity(
+            self._level_units, self._level_low, self._level_high, self.dialect.amplitude_unit
+        )
+        call.arguments.done()
+        self._suffix_one(call)
+        before, self._level = self._level, quantise(value, self.settings.level_resolution)
+        self._change(call.now_s, self.settings.range_dropout_s if self._crosses(before, self._level) else 0.0)
+
+    def _crosses(self, before: float, after: float) -> bool:
+        old_v, new_v = (level_to_volts(self.dialect, level) for level in (before, after))
+        return any((old_v < boundary) != (new_v < boundary) for boundary in self.settings.range_boundaries_v)
+
+    def _read_level(self, call: Call) -> str:
+        self._suffix_one(call)
+        extreme = call.arguments.extreme(self._level_low, self._level_high)
+        value = self._level if extreme is None else extreme
+        return number_reply(self.dialect, "VOLT", self.dialect.amplitude_unit, value)
+
+    def _set_output(self, call: Call) -> None:
+        on = call.arguments.boolean()
+        call.arguments.done()
+        self._suffix_one(call)
+        if on and self._tripped:
+            raise ScpiError(-221, "protection has tripped; clear it first")
+        self._on = on
+        self._change(call.now_s)
+
+    def _clear(self, call: Call) -> None:
+        call.arguments.done()
+        self._suffix_one(call)
+        self._tripped = False
+
+    def _measure(self, call: Call) -> str:
+        rms_v = self._carriers.latest.level_v(call.now_s) / math.sqrt(2.0)
+        accuracy_v = self.settings.accuracy_absolute_v + self.settings.accuracy_relative * rms_v
+        return number_reply(self.dialect, "MEAS:VOLT:AC", "V", abs(self.readback(rms_v, accuracy_v, self._bias)))
+
+    @staticmethod
+    def _suffix_one(call: Call) -> None:
+        if call.suffix != 1:
+            raise ScpiError(-114, "one output")

@@ -1,0 +1,1 @@
+"""trapd: the background service that owns an ion trap's RF synthesizers and DC supplies."""

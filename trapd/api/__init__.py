@@ -1,0 +1,1 @@
+"""HTTP: decode, one call, encode."""

@@ -1,0 +1,81 @@
+"""Numbers for people: the unit beside them, few digits, and values that can be pasted back."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+
+from trapd.setpoint import AMPLITUDE, FREQUENCY, unit_of
+
+_PASTED_DIGITS = 9
+_HZ = ((1e9, "GHz"), (1e6, "MHz"), (1e3, "kHz"))
+
+
+def amount(value: float | None, unit: str, digits: int = 6) -> str:
+    """``2.1551 MHz``, ``260 V``, ``8.18 eV``; ``-`` for None."""
+    if value is None:
+        return "-"
+    if unit == "Hz":
+        for scale, name in _HZ:
+            if abs(value) >= scale:
+                return f"{number(value / scale, digits)} {name}"
+    return f"{number(value, digits)} {unit}".removesuffix(" 1")
+
+
+def number(value: float, digits: int = 6) -> str:
+    """``digits`` significant digits, and never a minus sign before zero."""
+    return f"{value + 0.0:.{digits}g}"
+
+
+def value_of(setpoint: str, value: float | None) -> str:
+    """A value of a setpoint; the drive frequency shows every Hz."""
+    unit = unit_of(setpoint)
+    return amount(value, unit, _digits_of(unit))
+
+
+def end_of(setpoint: str, value: float, *, upper: bool) -> str:
+    """An end of an interval, shortened inwards, so that what is read can be asked for."""
+    unit = unit_of(setpoint)
+    return amount(_shortened(value, _digits_of(unit), up=not upper), unit, _digits_of(unit))
+
+
+def assignment(setpoint: str, value: float, asked: float | None = None) -> str:
+    """``endcaps=120V``, to paste on a command line. Shortened away from ``asked``, which lay outside."""
+    short = value if asked is None or asked == value else _shortened(value, _PASTED_DIGITS, up=asked < value)
+    unit = unit_of(setpoint)
+    if unit == "Hz":
+        for scale, name in _HZ[1:]:
+            if abs(short) >= scale:
+                return f"{setpoint}={number(short / scale, 12)}{name}"
+    return f"{setpoint}={number(short, 12)}{unit}"
+
+
+def in_order(values: Mapping[str, float]) -> dict[str, float]:
+    """The drive first, then the electrodes as they come."""
+    drive = {name: values[name] for name in (FREQUENCY, AMPLITUDE) if name in values}
+    return {**drive, **values}
+
+
+def duration(seconds: float) -> str:
+    """``3 ms``, ``0.8 s``, ``42 s``, ``3 min 20 s``."""
+    if 0 < seconds < 0.1:
+        return f"{seconds * 1e3:.3g} ms"
+    if seconds < 60:
+        return f"{seconds:.2g} s" if seconds < 10 else f"{seconds:.0f} s"
+    minutes, rest = divmod(round(seconds), 60)
+    return f"{minutes} min {rest} s" if rest else f"{minutes} min"
+
+
+def _digits_of(unit: str) -> int:
+    return 9 if unit == "Hz" else 6
+
+
+def _shortened(value: float, digits: int, *, up: bool) -> float:
+    """Rounded to ``digits`` significant ones, up or down; a value that has no more than these stays."""
+    if value == 0:
+        return value
+    nearest = float(f"{value:.{digits}g}")
+    if math.isclose(nearest, value, rel_tol=1e-13):
+        return nearest
+    step = 10.0 ** (math.floor(math.log10(abs(value))) - digits + 1)
+    return (math.ceil if up else math.floor)(value / step) * step

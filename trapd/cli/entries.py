@@ -1,0 +1,127 @@
+"""Entries of the record for people: one line each, in the words of their kind. Works on entries as data."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Callable, Mapping
+from typing import Any
+
+from trapd.cli.amounts import amount, duration, in_order, value_of
+from trapd.setpoint import FREQUENCY
+
+Data = Mapping[str, Any]
+
+_LONGEST = 160
+
+
+def sentence(entry: Data) -> str:
+    """What the entry says, shortened; the whole of it is in ``--json``."""
+    say = _SENTENCES.get(entry["kind"], _anything)
+    try:
+        text = say(entry["data"])
+    except (KeyError, TypeError, ValueError, IndexError, AttributeError):  # written by another version
+        text = _anything(entry["data"])
+    return text if len(text) <= _LONGEST else text[: _LONGEST - 1] + "…"
+
+
+def contents_words(contents: Data) -> str:
+    """``2 40Ca+``, ``nothing``, ``unknown, 1 40Ca+ guarded``, ``1 40Ca+, 88Sr+ coming in``."""
+    ions = ", ".join(f"{number} {name}" for name, number in contents["ions"].items())
+    match contents["presence"]:
+        case "none":
+            return "nothing"
+        case "unknown":
+            return f"unknown, {ions or 'every species of the file'} guarded"
+        case "loading":
+            return ", ".join(part for part in (ions, f"{' and '.join(contents['incoming'])} coming in") if part)
+        case _:
+            return ions
+
+
+def _anything(data: Data) -> str:
+    return json.dumps(data, ensure_ascii=False, default=str)
+
+
+def _values(values: Data) -> str:
+    return ", ".join(f"{name} {value_of(name, value)}" for name, value in in_order(values).items())
+
+
+def _why(data: Data) -> str:
+    return f": {data['why']}" if data.get("why") else ""
+
+
+def _request(data: Data) -> str:
+    contents = data.get("contents")
+    what = _values(data["values"]) or data.get("point") or (contents and contents_words(contents)) or ""
+    return f"{data['kind']} {what}".strip() + _why(data)
+
+
+def _verdict(data: Data) -> str:
+    if data["accepted"]:
+        return f"accepted {_values(data['values'])}" + (" (recovering)" if data["recovering"] else "")
+    return "refused: " + "; ".join(f"{one['rule']}: {one['message']}" for one in data["reasons"])
+
+
+def _ramp(data: Data) -> str:
+    seconds = sum(step["wait_s"] for step in data["steps"])
+    moved = dict.fromkeys(step["setpoint"] for step in data["steps"])
+    ways = ", then ".join(
+        f"{name} {value_of(name, data['start'][name])} to {value_of(name, data['target'][name])}" for name in moved
+    )
+    return f"{len(data['steps'])} steps, {seconds:.1f} s: {ways}"
+
+
+def _intent(data: Data) -> str:
+    if data["quantity"] == "output":
+        return f"{data['setpoint']} {'on' if data['level'] else 'off'} ({data['instrument']})"
+    level = amount(data["level"], "Hz" if data["setpoint"] == FREQUENCY else "V", 9)
+    return f"{data['setpoint']} = {value_of(data['setpoint'], data['value'])} ({data['instrument']} told {level})"
+
+
+def _outcome(data: Data) -> str:
+    read = "" if data["readback"] is None else f", read back {data['readback']:.9g}"
+    return f"of {data['intent']}: {data['state']}{read}" + (f": {data['error']}" if data["error"] else "")
+
+
+def _result(data: Data) -> str:
+    return f"of {data['request']}: {data['state']}" + (f": {data['error']}" if data["error"] else "")
+
+
+def _contents(data: Data) -> str:
+    return contents_words(data) + _why(data)
+
+
+def _off(data: Data) -> str:
+    said = (
+        f"{name} {'off' if one['off'] else 'NOT CONFIRMED'} after {duration(one['after_s'])}"
+        for name, one in data["instruments"].items()
+    )
+    return ", ".join(said) + _why(data)
+
+
+def _token(data: Data) -> str:
+    return f"{data['action']} {data['name']}" + (f" ({data['role']})" if data.get("role") else "")
+
+
+def _start(data: Data) -> str:
+    return ", ".join(f"{name} {version}" for name, version in data["software"].items())
+
+
+def _configuration(data: Data) -> str:
+    return str(data["source"])
+
+
+_SENTENCES: Mapping[str, Callable[[Data], str]] = {
+    "request": _request,
+    "verdict": _verdict,
+    "ramp": _ramp,
+    "intent": _intent,
+    "outcome": _outcome,
+    "result": _result,
+    "contents": _contents,
+    "off": _off,
+    "token": _token,
+    "start": _start,
+    "configuration": _configuration,
+    "heartbeat": lambda data: _values(data["values"]),
+}

@@ -1,0 +1,133 @@
+"""The program itself: which commands there are, and what becomes of errors at this edge."""
+
+from __future__ import annotations
+
+import os
+import sys
+import traceback
+from collections.abc import Mapping
+from difflib import get_close_matches
+from importlib import import_module
+from typing import Any, NoReturn
+
+import click
+
+from trapd.cli.answer import INTERRUPTED, tell_error
+from trapd.errors import Bug, TrapdError
+
+BROKEN_PIPE = 141
+"""128 + SIGPIPE: what a shell reports of a program that this signal ends."""
+
+COMMANDS: Mapping[str, Mapping[str, str]] = {
+    "Start here": {"demo": "demo", "check": "check", "serve": "serve"},
+    "Ask without a daemon": {"judge": "judge", "window": "window"},
+    "The running daemon": {
+        "status": "status",
+        "on": "switching",
+        "set": "moves",
+        "go": "moves",
+        "back": "moves",
+        "ions": "ions",
+        "empty": "switching",
+        "stop": "off",
+        "off": "off",
+    },
+    "What was done": {"record": "record", "verify": "verify"},
+    "People": {"token": "token"},
+}
+"""Heading to command to the module of this package that defines it, under its own name with `_command` after it."""
+
+CAUTIONS = """\
+trapd protects the experiment, not people: RF burns, high voltage and stored charge, lasers and vacuum stay dangerous.
+It is no safety device: hardware interlocks come first, and local rules and qualified people decide."""
+
+MODULES = {name: module for group in COMMANDS.values() for name, module in group.items()}
+
+
+class Program(click.Group):
+    """Loads a command when it is asked for, and turns every error into words and an exit code."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        return list(MODULES)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
+        if cmd_name not in MODULES:
+            return None
+        command = getattr(import_module(f"trapd.cli.{MODULES[cmd_name]}"), f"{cmd_name}_command")
+        assert isinstance(command, click.Command)
+        return command
+
+    def resolve_command(
+        self, ctx: click.Context, args: list[str]
+    ) -> tuple[str | None, click.Command | None, list[str]]:
+        if args[0] not in MODULES and not args[0].startswith("-"):
+            near = get_close_matches(args[0], MODULES, n=1)
+            hint = f'did you mean "{near[0]}"?' if near else "`trapd --help` lists them."
+            raise click.UsageError(f'there is no command "{args[0]}"; {hint}', ctx)
+        return super().resolve_command(ctx, args)
+
+    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+        widest = max(map(len, MODULES))
+        for heading, names in COMMANDS.items():
+            with formatter.section(heading):
+                rows = [(name.ljust(widest), self._short_help(ctx, name)) for name in names]
+                formatter.write_dl(rows)
+
+    def _short_help(self, ctx: click.Context, name: str) -> str:
+        command = self.get_command(ctx, name)
+        assert command is not None
+        return command.get_short_help_str(limit=120)
+
+    def invoke(self, ctx: click.Context) -> Any:
+        try:
+            answer = super().invoke(ctx)
+            sys.stdout.flush()
+        except TrapdError as error:
+            _fail(ctx, error)
+        except BrokenPipeError:
+            _leave_quietly(ctx)
+        except KeyboardInterrupt:
+            click.echo("\ninterrupted", err=True)
+            ctx.exit(INTERRUPTED)
+        except (click.ClickException, click.exceptions.Exit, click.Abort):
+            raise
+        except Exception as error:
+            _fail(ctx, _bug(error))
+        return answer
+
+
+def _bug(error: Exception) -> Bug:
+    bug = Bug(f"{type(error).__name__}: {error}")
+    bug.__cause__ = error
+    return bug
+
+
+def _fail(ctx: click.Context, error: TrapdError) -> NoReturn:
+    if isinstance(error, Bug):
+        traceback.print_exception(error.__cause__ or error)
+        click.echo("This is a bug of trapd. Please report it, with the lines above and what you did.", err=True)
+    try:
+        tell_error(error)
+    except BrokenPipeError:
+        _leave_quietly(ctx)
+    ctx.exit(error.exit_code)
+
+
+def _leave_quietly(ctx: click.Context) -> NoReturn:
+    """Whoever read our output has stopped; Python must not complain about it once more when it flushes at the end."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    ctx.exit(BROKEN_PIPE)
+
+
+@click.group(
+    cls=Program,
+    epilog=CAUTIONS,
+    context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 120},
+)
+@click.version_option(package_name="trapd", prog_name="trapd", message="%(prog)s %(version)s")
+def PROGRAM() -> None:  # noqa: N802
+    """The background service that owns a radio-frequency ion trap's synthesizers and supplies.
+
+    Offline commands take a trap file. Commands to a running daemon find it by themselves when there is one on this
+    machine; else name it with --at or TRAPD_AT.
+    """

@@ -1,0 +1,1 @@
+"""The trap file: read, checked, in SI; and what physics and guard are built from."""

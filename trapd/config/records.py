@@ -1,0 +1,134 @@
+"""The trap file as frozen records, SI inside. Built by `trapd.config.read`; nothing here reads a file."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Literal
+
+from trapd.physics.species import Species
+
+Geometry = Literal["linear", "ring", "tensor"]
+ElectrodeKind = Literal["endcap", "rods", "ring", "other"]
+Matrix = tuple[tuple[float, float, float], tuple[float, float, float], tuple[float, float, float]]
+
+
+@dataclass(frozen=True, kw_only=True)
+class TrapSection:
+    """``[trap]``. ``r0_m``, ``z0_m``, ``kappa``, ``phases`` as the geometry needs them; None where it does not.
+
+    ``escape_m`` (x, y, z): how far from the centre an ion is lost; only in tensor geometry, where nothing else says it.
+    """
+
+    name: str
+    geometry: Geometry
+    r0_m: float | None = None
+    z0_m: float | None = None
+    kappa: float | None = None
+    phases: int = 1
+    escape_m: tuple[float, float, float] | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class Sweep:
+    """The allowed range of one setpoint, the mean rate and the largest single command of a ramp."""
+
+    low: float
+    high: float
+    slew_per_s: float
+    step: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class ResonatorSection:
+    """``[drive.resonator]``, or a flat gain: then ``center_hz`` and ``loaded_q`` are None."""
+
+    gain: float
+    gain_uncertainty: float = 0.0
+    center_hz: float | None = None
+    center_uncertainty_hz: float = 0.0
+    loaded_q: float | None = None
+    level_max_v: float | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class DriveSection:
+    """``[drive]``. ``curvature`` (1/m^2 per volt) overrides the ideal one; never None in tensor geometry, which has no
+    ideal. ``warm_up_s`` follows a switch-on."""
+
+    instrument: str | None
+    waveform: Literal["sine"]
+    frequency: Sweep
+    amplitude: Sweep
+    resonator: ResonatorSection
+    curvature: Matrix | None = None
+    warm_up_s: float = 0.0
+
+
+@dataclass(frozen=True, kw_only=True)
+class ElectrodeSection:
+    """``[electrodes.NAME]``. ``curvature`` (1/m^2 per volt) overrides the ideal one; ``field`` in 1/m per volt."""
+
+    name: str
+    kind: ElectrodeKind
+    instrument: str | None
+    channel: int | None
+    voltage: Sweep
+    weight: float = 1.0
+    lag_s: float = 0.0
+    curvature: Matrix | None = None
+    field: tuple[float, float, float] | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class InstrumentSection:
+    """``[instruments.NAME]``."""
+
+    name: str
+    driver: str
+    resource: str
+    profile: str = "plain"
+    timeout_s: float = 1.0
+
+
+@dataclass(frozen=True, kw_only=True)
+class GuardSection:
+    margin: float
+    min_secular_frequency_hz: float | None = None
+    min_depth_ev: float | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class LoadingSection:
+    """``[loading]``. How long *loading* lasts before it becomes *unknown*."""
+
+    expires_s: float = 600.0
+
+
+@dataclass(frozen=True, kw_only=True)
+class ServerSection:
+    """``[server]``. ``host``/``port`` of the TCP listener (port 0: any free one). ``socket``: path of the Unix socket, None
+    for the usual one in the runtime directory."""
+
+    host: str = "127.0.0.1"
+    port: int = 8417
+    socket: Path | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class Config:
+    """One trap file, checked. ``source`` is its path, ``text`` its content as read, for the record."""
+
+    source: Path
+    text: str
+    trap: TrapSection
+    species: Mapping[str, Species]
+    drive: DriveSection
+    electrodes: Mapping[str, ElectrodeSection]
+    instruments: Mapping[str, InstrumentSection]
+    guard: GuardSection
+    points: Mapping[str, Mapping[str, float]]
+    record_file: Path
+    server: ServerSection = field(default_factory=ServerSection)
+    loading: LoadingSection = field(default_factory=LoadingSection)

@@ -1,0 +1,67 @@
+"""Start: read the instruments, record what was found, compare with what was last commanded. Nothing is commanded."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import asdict, dataclass
+
+from trapd.controller.activity import Activity
+from trapd.controller.desk import Desk
+from trapd.controller.drafts import DAEMON, contents_draft
+from trapd.controller.looking import look
+from trapd.record import Draft
+from trapd.setpoint import Contents, Values
+
+
+@dataclass(frozen=True, kw_only=True)
+class Remembered:
+    """What the record of earlier runs says: the last commanded values and outputs, the contents, the state before.
+
+    ``open_intents``: intents without an outcome; nobody knows whether they were sent.
+    """
+
+    values: Values
+    outputs: Mapping[str, bool]
+    contents: Contents | None
+    previous: Values | None
+    open_intents: tuple[int, ...] = ()
+
+
+def adopting(remembered: Remembered) -> Callable[[Desk], Activity]:
+    """The controller's first activity."""
+
+    def activity(desk: Desk) -> Activity:
+        desk.change(values=dict(remembered.values), outputs=dict(remembered.outputs), previous=remembered.previous)
+        contents, gone = _contents(desk, remembered)
+        desk.change(contents=contents)
+        surveys = yield from look(desk)
+        situation = desk.situation
+        found = {
+            "identities": {s.instrument: asdict(s.identity) for s in surveys},
+            "values": dict(situation.values),
+            "outputs": dict(situation.outputs),
+            "last_commanded": dict(remembered.values),
+            "differences": list(situation.doubt),
+            "no_longer_in_the_file": list(gone),
+            "unreachable": dict(situation.unreachable),
+            "open_intents": list(remembered.open_intents),
+        }
+        drafts = [
+            Draft(kind="identity", actor=DAEMON, data={"instrument": s.instrument, **asdict(s.identity)})
+            for s in surveys
+        ]
+        drafts.append(Draft(kind="found", actor=DAEMON, data=found))
+        drafts.append(contents_draft(situation.contents, DAEMON, "after a start"))
+        yield desk.note(*drafts)
+        return found
+
+    return activity
+
+
+def _contents(desk: Desk, remembered: Remembered) -> tuple[Contents, tuple[str, ...]]:
+    """After any start the contents are unknown; those last held stay guarded (before any, the catalogue). The second:
+    species that the trap file no longer knows; with any of them gone the whole catalogue is guarded."""
+    last = remembered.contents
+    ions = {} if last is None else dict.fromkeys(last.incoming, 1) | dict(last.ions)
+    gone = tuple(name for name in ions if name not in desk.model.catalogue)
+    return Contents(presence="unknown", ions={} if gone else ions), gone

@@ -1,0 +1,269 @@
+"""The only writer to hardware: one thread, one mailbox, and straight-line activities that wait only there."""
+
+from __future__ import annotations
+
+import itertools
+import logging
+import threading
+from collections import deque
+from collections.abc import Callable
+from concurrent.futures import Future
+from contextlib import suppress
+from dataclasses import replace
+from typing import Any
+
+from trapd.controller.activity import Activity
+from trapd.controller.desk import RETRY_S, Desk
+from trapd.controller.drafts import DAEMON, unregistered_drafts
+from trapd.controller.kinds import ACTIVITIES
+from trapd.controller.looking import no_longer_known
+from trapd.controller.mailbox import Mailbox, Urgency
+from trapd.controller.off import retrying_off, switching_off
+from trapd.controller.running import Running
+from trapd.controller.situation import Situation
+from trapd.controller.ticket import Ticket
+from trapd.errors import QueueFull, Superseded, TrapdError
+from trapd.record import Draft
+from trapd.setpoint import Request
+
+MOST_WAITING = 16
+"""Requests that may wait behind the one in progress; one more is answered 429."""
+
+TICK_S = 0.25
+"""How often the thread looks at what is due (retries, the end of loading) when nothing else comes."""
+
+HEARTBEAT_S = 60.0
+
+LAST_TRY_S = 1.0
+
+_log = logging.getLogger(__name__)
+
+
+class Controller:
+    """Start with `start`; ask with `submit`, `off` and `stop` from any thread; read `situation` from any thread."""
+
+    def __init__(self, desk: Desk) -> None:
+        self._desk = desk
+        desk.spawn = self._spawn
+        self._mailbox = Mailbox()
+        self._waiting: deque[Ticket] = deque()
+        self._current: Running | None = None
+        self._running: dict[int, Running] = {}
+        self._numbers = itertools.count()
+        self._due: list[tuple[int, Callable[[], None]]] = []
+        self._ending = False
+        self._retrying_off = False
+        self._offs = 0
+        self._next_heartbeat_ns = 0
+        self._thread = threading.Thread(target=self._run, name="controller", daemon=True)
+
+    @property
+    def situation(self) -> Situation:
+        return replace(self._desk.situation, unwritten=len(self._desk.unwritten))
+
+    def start(self, adoption: Callable[[Desk], Activity]) -> Future[dict[str, Any]]:
+        """Run the thread; its first activity reads the instruments and touches nothing."""
+        future: Future[dict[str, Any]] = Future()
+        self._thread.start()
+        self._mailbox.post(Urgency.STEP_DONE, lambda: self._adopt(adoption, future))
+        return future
+
+    def submit(self, request: Request) -> Ticket:
+        """Queue a request. Its ticket is answered when it is recorded and when it is done."""
+        ticket = Ticket(request)
+        if request.kind == "off":
+            self._mailbox.post(Urgency.OFF, lambda: self._off(ticket))
+        elif request.kind == "stop":
+            self._mailbox.post(Urgency.STOP, lambda: self._stop(ticket))
+        else:
+            self._mailbox.post(Urgency.REQUEST, lambda: self._request(ticket))
+        return ticket
+
+    def withdraw(self, ticket: Ticket) -> None:
+        """Whoever asked has gone: a request that still waits its turn is dropped, one that has begun goes on."""
+        self._mailbox.post(Urgency.STOP, lambda: self._withdraw(ticket))
+
+    def close(self, timeout_s: float = 5.0) -> None:
+        """Stop what moves, leave every output as it is, end the thread."""
+        self._mailbox.post(Urgency.STOP, self._end)
+        if self._thread.is_alive():
+            self._thread.join(timeout_s)
+
+    # Everything below runs on the controller's thread.
+
+    def _run(self) -> None:
+        while not (self._ending and not self._running):
+            letter = self._mailbox.take(self._patience_s())
+            try:
+                if letter is not None:
+                    letter.act()
+                self._do_what_is_due()
+            except Exception:  # a bug in one letter must not take `off` away
+                _log.exception("the controller goes on after a bug")
+        self._leave()
+
+    def _leave(self) -> None:
+        """Answer whoever still asked, and try a last time to write what could not be written."""
+        while (letter := self._mailbox.take(0.0)) is not None:
+            letter.act()
+        for future in self._desk.retry_unwritten():
+            with suppress(Exception):
+                future.result(LAST_TRY_S)
+        for drafts in self._desk.unwritten:
+            _log.error("never written: %s", drafts)
+
+    def _patience_s(self) -> float:
+        if not self._due:
+            return TICK_S
+        until_ns = min(when for when, _ in self._due) - self._desk.clock.monotonic_ns()
+        return min(TICK_S, max(0.0, until_ns / 1e9))
+
+    def _do_what_is_due(self) -> None:
+        now_ns = self._desk.clock.monotonic_ns()
+        ready = [act for when, act in self._due if when <= now_ns]
+        self._due = [(when, act) for when, act in self._due if when > now_ns]
+        for act in ready:
+            self._do(act)
+        if self._desk.situation.contents.presence == "loading" and now_ns >= (self._desk.loading_until_ns or now_ns):
+            no_longer_known(self._desk, "loading was not concluded in time")
+        if self._desk.unwritten and self._desk.retry_due_ns <= now_ns:
+            self._desk.retry_due_ns = now_ns + int(RETRY_S * 1e9)
+            self._desk.retry_unwritten()
+        if now_ns >= self._next_heartbeat_ns and not self._ending:
+            self._next_heartbeat_ns = now_ns + int(HEARTBEAT_S * 1e9)
+            self._desk.note(Draft(kind="heartbeat", actor=DAEMON, data={"values": dict(self._desk.situation.values)}))
+
+    def _do(self, act: Callable[[], None]) -> None:
+        try:
+            act()
+        except Exception:  # the others that are due come all the same
+            _log.exception("the controller goes on after a bug")
+
+    def _adopt(self, adoption: Callable[[Desk], Activity], future: Future[dict[str, Any]]) -> None:
+        self._current = running = self._new(adoption(self._desk), future.set_result, future.set_exception)
+        running.resume(None)
+
+    def _off(self, ticket: Ticket) -> None:
+        self._supersede("off came first")
+
+        def finish(answer: dict[str, Any]) -> None:
+            ticket.finish(answer)
+            ended()
+
+        def fail(error: TrapdError) -> None:
+            ticket.fail(error)
+            ended()
+
+        def ended() -> None:
+            self._offs -= 1
+            self.schedule(RETRY_S, self._retry_off)
+            self._next()
+
+        self._offs += 1
+        self._begin(switching_off(self._desk, ticket), finish, fail, to_the_end=True)
+
+    def _stop(self, ticket: Ticket) -> None:
+        moving, busy = self._desk.situation.moving, self._current is not None
+        self._supersede("a stop came first")
+        self._desk.note(
+            Draft(
+                kind="halt",
+                actor=ticket.request.author,
+                data={"why": ticket.request.why, "request": moving and moving.request},
+            )
+        )
+        ticket.finish({"stopped": busy, "values": dict(self._desk.situation.values)})
+
+    def _request(self, ticket: Ticket) -> None:
+        if self._ending:
+            self._fail(ticket, Superseded("the daemon is stopping; nothing was sent"))
+        elif len(self._waiting) >= MOST_WAITING:
+            self._fail(ticket, QueueFull(f"{MOST_WAITING} requests wait already; nothing was sent"))
+        else:
+            self._waiting.append(ticket)
+            self._next()
+
+    def _withdraw(self, ticket: Ticket) -> None:
+        if ticket in self._waiting:
+            self._waiting.remove(ticket)
+            self._fail(ticket, Superseded("whoever asked went away before its turn; nothing was sent"))
+
+    def _next(self) -> None:
+        if self._current is None and self._offs == 0 and self._waiting:
+            ticket = self._waiting.popleft()
+            activity = ACTIVITIES[ticket.request.kind](self._desk, ticket)
+            # The slot is taken before the first step: an activity may end at once and ask for the next.
+            self._current = running = self._new(activity, ticket.finish, lambda error: self._fail(ticket, error))
+            running.resume(None)
+
+    def _fail(self, ticket: Ticket, error: TrapdError) -> None:
+        """Answer with the error. What never came as far as a verdict is written down here."""
+        if not ticket.registered and not ticket.recorded.done():
+            self._desk.note(*unregistered_drafts(ticket.request, self._desk.situation.values, error))
+        ticket.fail(error)
+
+    def _supersede(self, why: str) -> None:
+        """Stop what moves and answer what waits: the outputs hold where they are."""
+        waiting, self._waiting = list(self._waiting), deque()
+        for ticket in waiting:
+            self._fail(ticket, Superseded(f"{why}; nothing was sent"))
+        current, self._current = self._current, None
+        if current is not None:
+            current.throw(Superseded(f"{why}; the move stopped where it was"))
+
+    def _end(self) -> None:
+        self._ending = True
+        self._supersede("the daemon is stopping")
+        for running in [r for r in self._running.values() if not r.to_the_end]:
+            running.throw(Superseded("the daemon is stopping"))
+
+    def _retry_off(self) -> None:
+        if self._desk.situation.off_pending and not self._retrying_off and not self._ending:
+            self._retrying_off = True
+            self._begin(retrying_off(self._desk), lambda _: self._off_retried(), lambda _: self._off_retried())
+
+    def _off_retried(self) -> None:
+        self._retrying_off = False
+        if self._desk.situation.off_pending:
+            self.schedule(RETRY_S, self._retry_off)
+
+    def _spawn(self, activity: Activity, *, to_the_end: bool = False) -> None:
+        self._begin(activity, lambda _: None, lambda _: None, to_the_end=to_the_end)
+
+    def schedule(self, seconds: float, act: Callable[[], None]) -> None:
+        self._due.append((self._desk.clock.monotonic_ns() + int(seconds * 1e9), act))
+
+    def _begin(
+        self,
+        activity: Activity,
+        finish: Callable[[dict[str, Any]], None],
+        fail: Callable[[TrapdError], None],
+        *,
+        to_the_end: bool = False,
+    ) -> Running:
+        running = self._new(activity, finish, fail, to_the_end=to_the_end)
+        running.resume(None)
+        return running
+
+    def _new(
+        self,
+        activity: Activity,
+        finish: Callable[[dict[str, Any]], None],
+        fail: Callable[[TrapdError], None],
+        *,
+        to_the_end: bool = False,
+    ) -> Running:
+        number = next(self._numbers)
+        running = Running(self, number, activity, finish, fail, to_the_end)
+        self._running[number] = running
+        return running
+
+    def finished(self, running: Running) -> None:
+        self._running.pop(running.number, None)
+        if self._current is running:
+            self._current = None
+            self._next()
+
+    def post(self, act: Callable[[], None]) -> None:
+        """From any thread: something an activity waited for is there."""
+        self._mailbox.post(Urgency.STEP_DONE, act)

@@ -1,0 +1,146 @@
+"""Look at the instruments before anything is judged: the guard judges what is, not what was commanded."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from concurrent.futures import Future
+
+from trapd.controller.activity import Activity, Part, Pause, Within
+from trapd.controller.desk import Desk
+from trapd.controller.drafts import DAEMON, contents_draft
+from trapd.controller.survey import Survey, differences, survey_job, values_found
+from trapd.errors import InstrumentUnreachable
+from trapd.record import Draft
+from trapd.setpoint import AMPLITUDE, FREQUENCY, Contents
+from trapd.wiring import DRIVE_OUTPUT
+from trapd_drivers.errors import DriverError
+from trapd_drivers.interfaces import Instrument, RfSource
+
+ANSWER_S = 5.0
+"""Longer than any instrument's own time-out; beyond it the instrument counts as unreachable."""
+
+DARK_S = 1.0
+"""How long RF must be verified off before the trap counts as empty."""
+
+
+def look(desk: Desk) -> Part:
+    """Survey every instrument, take what was found for the present state, record what differs.
+
+    Returns the surveys. Instruments that do not answer keep their last known values and are named in the situation. If a
+    command was handed to any instrument meanwhile, what was read is stale and nothing is taken from it.
+    """
+    sent = desk.sent
+    jobs = {name: worker.submit(survey_job(desk.wiring, name)) for name, worker in desk.workers.items()}
+    surveys: list[Survey] = yield from _gather(desk, jobs)
+    before = desk.situation
+    words = differences(desk.wiring, desk.model, surveys, before.values, before.outputs)
+    if desk.sent == sent:
+        outputs = dict(before.outputs)
+        for found in surveys:
+            outputs.update(found.outputs)
+        desk.change(values=_merged(desk, surveys), outputs=outputs, doubt=tuple(words))
+    elif not any(found.power_on or found.tripped or found.errors for found in surveys):
+        return surveys
+    if words:
+        desk.note(_found_draft(desk, surveys, words))
+    if any(found.power_on for found in surveys):
+        no_longer_known(desk, "an instrument was switched off and on")
+    follow_darkness(desk)
+    return surveys
+
+
+def looking(desk: Desk) -> Activity:
+    """A look of its own, after a move that failed."""
+    yield from look(desk)
+    return {}
+
+
+def require_reachable(desk: Desk, setpoints: Iterable[str]) -> None:
+    """Nothing that touches an instrument that does not answer, and nothing at all while a value is not known."""
+    situation = desk.situation
+    missing = [name for name in desk.wiring.setpoints if name not in situation.values]
+    for name in [*setpoints, *missing]:
+        instrument = desk.wiring.instrument_of(name)
+        if instrument in situation.unreachable or name in missing:
+            why = situation.unreachable.get(instrument, "its state is not known")
+            raise InstrumentUnreachable(f"{name}: {instrument} does not answer ({why}); nothing was sent")
+
+
+def no_longer_known(desk: Desk, why: str) -> None:
+    """Doubt: those held stay guarded, and a person must say again what is in the trap."""
+    contents = desk.situation.contents
+    if contents.presence in ("held", "loading"):
+        unknown = Contents(presence="unknown", ions=dict.fromkeys(contents.incoming, 1) | dict(contents.ions))
+        desk.change(contents=unknown)
+        desk.note(contents_draft(unknown, DAEMON, why))
+
+
+def follow_darkness(desk: Desk) -> None:
+    """With RF found off the contents are in doubt at once, and after a second of it the trap counts as empty."""
+    if desk.situation.outputs.get(DRIVE_OUTPUT) is False and desk.situation.contents.presence != "none":
+        no_longer_known(desk, "RF was found off")
+        desk.spawn(darkness(desk))
+
+
+def darkness(desk: Desk) -> Activity:
+    """RF verified off for `DARK_S`: nothing can be in the trap, and the daemon says so."""
+    sent = desk.sent
+    yield Pause(DARK_S)
+    if (yield from verified_dark(desk)) and desk.sent == sent and desk.situation.contents.presence != "none":
+        nobody = Contents(presence="none")
+        desk.change(contents=nobody)
+        desk.note(contents_draft(nobody, DAEMON, f"RF verified off for {DARK_S:g} s"))
+    elif desk.sent != sent:
+        follow_darkness(desk)
+    return {}
+
+
+def verified_dark(desk: Desk) -> Part:
+    """Whether the RF source says now that its output is off."""
+
+    def job(instrument: Instrument) -> bool:
+        assert isinstance(instrument, RfSource)
+        return not instrument.read_output()
+
+    try:
+        return (yield Within(desk.workers[desk.wiring.drive].submit(job), ANSWER_S))
+    except (DriverError, TimeoutError):
+        return False
+
+
+def _gather(desk: Desk, jobs: dict[str, Future[Survey]]) -> Part:
+    surveys, unreachable = [], {}
+    for name, job in jobs.items():
+        try:
+            found: Survey = yield Within(job, ANSWER_S)
+        except (DriverError, TimeoutError) as error:
+            unreachable[name] = str(error) or f"no answer within {ANSWER_S:g} s"
+        else:
+            surveys.append(found)
+            if found.failure is not None:
+                unreachable[name] = found.failure
+    if unreachable.keys() != desk.situation.unreachable.keys():
+        desk.note(Draft(kind="found", actor=DAEMON, data={"unreachable": unreachable}))
+    desk.change(unreachable=unreachable)
+    return surveys
+
+
+def _merged(desk: Desk, surveys: list[Survey]) -> dict[str, float]:
+    """Within accuracy of the command the command is the better number; beyond it what was found counts."""
+    before = desk.situation.values
+    merged = values_found(desk.model, surveys, before)
+    for name, value in merged.items():
+        if name in before and (name != AMPLITUDE or FREQUENCY in before):
+            accuracy = desk.wiring.accuracy(desk.model, before, name)
+            merged[name] = before[name] if abs(value - before[name]) <= accuracy else value
+    return merged
+
+
+def _found_draft(desk: Desk, surveys: list[Survey], words: list[str]) -> Draft:
+    data = {
+        "differences": words,
+        "values": dict(desk.situation.values),
+        "outputs": dict(desk.situation.outputs),
+        "programmed": {name: level for found in surveys for name, level in found.programmed.items()},
+    }
+    return Draft(kind="found", actor=DAEMON, data=data)

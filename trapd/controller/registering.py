@@ -1,0 +1,122 @@
+"""A request's entries: request, verdict and ramp in one commit before it begins, its result at the end."""
+
+from __future__ import annotations
+
+from concurrent.futures import Future
+from contextlib import suppress
+from dataclasses import asdict, dataclass
+from typing import Any
+
+from trapd.controller.activity import Activity, Part
+from trapd.controller.desk import Desk
+from trapd.controller.drafts import ramp_draft, request_draft, result_draft, verdict_draft
+from trapd.controller.looking import looking
+from trapd.controller.ticket import Ticket
+from trapd.errors import Bug, Superseded, TrapdError
+from trapd.record import Draft, Entry
+from trapd.setpoint import Ramp, Verdict
+from trapd.wiring import Command
+
+
+@dataclass(frozen=True, kw_only=True)
+class Origin:
+    """What every intent of a move refers to: the entries it came from, who and why."""
+
+    request: int
+    verdict: int
+    ramp: int | None
+    author: str
+    why: str
+
+    def intent(self, command: Command) -> Draft:
+        data = {
+            **asdict(command.intent),
+            "request": self.request,
+            "verdict": self.verdict,
+            "ramp": self.ramp,
+            "step": command.step,
+            "who": self.author,
+            "why": self.why,
+        }
+        return Draft(kind="intent", actor=self.author, data=data)
+
+
+def register(desk: Desk, ticket: Ticket, verdict: Verdict, ramp: Ramp | None) -> Part:
+    """Request, verdict and ramp in one commit. Tells whoever asked; returns the `Origin` of the move's intents."""
+    yield from desk.write_what_waits()
+    request = ticket.request
+    drafts = [request_draft(request), verdict_draft(request, verdict)]
+    if ramp is not None:
+        drafts.append(ramp_draft(request, ramp))
+    entries: tuple[Entry, ...] = yield from commit(desk, ticket, drafts)
+    origin = Origin(
+        request=entries[0].seq,
+        verdict=entries[1].seq,
+        ramp=entries[2].seq if ramp is not None else None,
+        author=request.author,
+        why=request.why,
+    )
+    if ramp is None:
+        ticket.tell(refusal(verdict, origin.request))
+    else:
+        accepted = {"entry": origin.request, "accepted": True, "verdict": asdict(verdict)}
+        ticket.tell({**accepted, "duration_s": ramp.duration_s, "steps": len(ramp.steps)})
+    return origin
+
+
+def commit(desk: Desk, ticket: Ticket, drafts: list[Draft]) -> Part:
+    """Write a request's first entries; the request itself is the first draft.
+
+    If the request is superseded just then, its entries may still come to stand, and they get their result.
+    """
+    future = desk.record.append(*drafts)
+    try:
+        return (yield future)
+    except Superseded as error:
+        ticket.registered = True
+        desk.spawn(_never_begun(desk, ticket, future, error), to_the_end=True)
+        raise
+
+
+def _never_begun(desk: Desk, ticket: Ticket, future: Future[tuple[Entry, ...]], error: TrapdError) -> Activity:
+    with suppress(TrapdError):
+        entries = yield future
+        here = desk.situation.values
+        desk.note(result_draft(ticket.request.author, entries[0].seq, here, here, returns=False, error=error))
+    return {}
+
+
+def refusal(verdict: Verdict, entry: int) -> dict[str, Any]:
+    return {"entry": entry, "accepted": False, "verdict": asdict(verdict)}
+
+
+def conclude(desk: Desk, origin: Origin, part: Part, *, returns: bool = True) -> Activity:
+    """Run a part of an activity to its end, however it ends, and write down how it ended; the answer of the request.
+
+    ``returns``: `back` may lead to where this move began.
+    """
+    start = desk.situation.values
+
+    def result(error: TrapdError | None) -> Draft:
+        end = desk.situation.values
+        moved = returns and dict(end) != dict(start)
+        return result_draft(origin.author, origin.request, start, end, returns=moved, error=error)
+
+    try:
+        yield from part
+    except Exception as error:
+        known = error if isinstance(error, TrapdError) else Bug(f"{type(error).__name__}: {error}")
+        desk.note(result(known))
+        if not isinstance(error, Superseded):
+            desk.change(doubt=(*desk.situation.doubt, str(known)))
+            desk.spawn(looking(desk))
+        raise
+    finally:
+        desk.change(moving=None)
+    if not returns:
+        desk.change(previous=None)
+    elif dict(desk.situation.values) != dict(start):
+        desk.change(previous=dict(start))
+    with suppress(TrapdError):  # done is done; if that could not be written it is kept and written later
+        yield desk.note(result(None))
+    return {"entry": origin.request, "accepted": True, "state": "done", "values": dict(desk.situation.values)}

@@ -1,0 +1,1 @@
+"""The guard: pure judgement, no I/O."""
