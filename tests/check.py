@@ -1,6 +1,6 @@
 """``python -m tests.check``: everything CI checks. Format, lint, types, import contract, tests.
 
-Arguments go to pytest. Stops at the first failure and says which step it was.
+Arguments go to pytest, which runs three processes: most tests wait for instruments, not for the processor. Stops at the first failure and says which step it was.
 """
 
 from __future__ import annotations
@@ -20,7 +20,7 @@ def main() -> int:
         ("lint", [BIN / "ruff", "check", "."]),
         ("types", [sys.executable, "-m", "mypy"]),
         ("import contract", [BIN / "lint-imports"]),
-        ("tests", [sys.executable, "-m", "pytest", *sys.argv[1:]]),
+        ("tests", [sys.executable, "-m", "pytest", "-n", "3", "--dist", "loadscope", *sys.argv[1:]]),
     ]
     for name, command in steps:
         print(f"--- {name}", flush=True)

@@ -8,6 +8,7 @@ import re
 import socket
 import stat
 import tomllib
+import warnings
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -15,7 +16,7 @@ from typing import Any
 
 from platformdirs import user_runtime_path
 
-from trapd.errors import ConfigError, DaemonUnreachable
+from trapd.errors import ConfigError, DaemonUnreachable, NotPermitted
 
 AT = "TRAPD_AT"
 """Environment variable: a URL, a socket path or a trap file."""
@@ -37,8 +38,20 @@ class Address:
 
 
 def runtime_socket(trap_name: str) -> Path:
-    """The Unix socket that the daemon of a trap binds when its file names none."""
-    return user_runtime_path("trapd") / f"{_slug(trap_name)}.sock"
+    """The Unix socket that the daemon of a trap binds when its file names none. Makes its directory, for this user alone.
+
+    Raises `NotPermitted` when the directory belongs to somebody else, `ConfigError` when it cannot be made.
+    """
+    directory = _runtime_directory()
+    try:
+        for each in (directory.parent, directory):
+            each.mkdir(mode=0o700, exist_ok=True)
+    except OSError as error:
+        raise ConfigError(
+            f"{directory} cannot be made ({error.strerror}); name a socket in the trap file (server.socket), or set "
+            "XDG_RUNTIME_DIR"
+        ) from error
+    return _ours(directory) / _file_name(trap_name)
 
 
 def find(at: str | Path | None = None) -> Address:
@@ -55,20 +68,44 @@ def find(at: str | Path | None = None) -> Address:
     return _of_trap_file(path) if path.suffix == ".toml" else Address(socket_path=path)
 
 
-def _slug(trap_name: str) -> str:
-    plain = re.sub(r"[^a-z0-9]+", "-", trap_name.lower()).strip("-")
-    if plain and len(plain) <= _LONGEST_SLUG:
-        return plain
-    return f"{plain[:_LONGEST_SLUG]}-{hashlib.sha256(trap_name.encode()).hexdigest()[:8]}".strip("-")
+def _file_name(trap_name: str) -> str:
+    slug = re.sub(r"[^a-z0-9]+", "-", trap_name.lower()).strip("-")
+    if not slug or len(slug) > _LONGEST_SLUG:
+        slug = f"{slug[:_LONGEST_SLUG]}-{hashlib.sha256(trap_name.encode()).hexdigest()[:8]}".strip("-")
+    return f"{slug}.sock"
 
 
 def _directories() -> tuple[Path, ...]:
-    return (user_runtime_path("trapd"), SYSTEM_DIRECTORY)
+    return (_ours(_runtime_directory()), SYSTEM_DIRECTORY)
+
+
+def _runtime_directory() -> Path:
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")  # root has no XDG_RUNTIME_DIR, and need not hear so at every command
+        try:
+            return user_runtime_path("trapd")
+        except PermissionError as error:
+            raise NotPermitted(f"{error}; set XDG_RUNTIME_DIR to a directory of your own") from error
+
+
+def _ours(directory: Path) -> Path:
+    """The same directory. Raises `NotPermitted` where whoever owns it could pass for a daemon, or listen in."""
+    for each in (directory.parent, directory):
+        try:
+            status = each.lstat()
+        except FileNotFoundError:
+            continue
+        if not stat.S_ISDIR(status.st_mode) or status.st_uid not in (0, os.geteuid()):
+            raise NotPermitted(
+                f"{each}: expected a directory of user {os.geteuid()}, found one of user {status.st_uid}, or none; "
+                "set XDG_RUNTIME_DIR to a directory of your own"
+            )
+    return directory
 
 
 def _the_only_one() -> Address:
     places = " and ".join(f"{directory}/*.sock" for directory in _directories())
-    live = [path for directory in _directories() for path in sorted(directory.glob("*.sock")) if _answers(path)]
+    live = [path for directory in _directories() for path in sorted(directory.glob("*.sock")) if answers(path)]
     if len(live) == 1:
         return Address(socket_path=live[0])
     if live:
@@ -76,7 +113,7 @@ def _the_only_one() -> Address:
     raise DaemonUnreachable(f"no daemon answers at {places}; start one with `trapd serve`, or {_HOW}")
 
 
-def _answers(path: Path) -> bool:
+def answers(path: Path) -> bool:
     """Whether somebody listens there whom we trust: root, or this user. Anybody may make a file in a shared folder."""
     try:
         status = path.lstat()
@@ -94,9 +131,9 @@ def _of_trap_file(path: Path) -> Address:
     name, own = _trap_and_socket(path)
     if own is not None:
         return Address(socket_path=path.absolute().parent / own)
-    sockets = [directory / runtime_socket(name).name for directory in _directories()]
+    sockets = [directory / _file_name(name) for directory in _directories()]
     for candidate in sockets:
-        if _answers(candidate):
+        if answers(candidate):
             return Address(socket_path=candidate)
     looked = " nor ".join(map(str, sockets))
     raise DaemonUnreachable(f"no daemon of {path} answers at {looked}; start it with `trapd serve {path}`")

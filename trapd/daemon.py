@@ -17,6 +17,7 @@ from trapd.address import runtime_socket
 from trapd.api.app import build_app
 from trapd.api.server import ApiServer
 from trapd.api.service import Service
+from trapd.cautions import CAUTIONS
 from trapd.clock import Clock, SystemClock, boot_id
 from trapd.config.build import guard_of
 from trapd.config.digest import as_data
@@ -79,8 +80,8 @@ class Daemon:
             stack.callback(worker.close, CLOSING_S)
         judges = ThreadPoolExecutor(1, thread_name_prefix="judge")
         others = ThreadPoolExecutor(1, thread_name_prefix="dry judge")
-        stack.callback(judges.shutdown, cancel_futures=True)
-        stack.callback(others.shutdown, cancel_futures=True)
+        stack.callback(judges.shutdown, wait=False, cancel_futures=True)
+        stack.callback(others.shutdown, wait=False, cancel_futures=True)
 
         desk = Desk(
             config=config,
@@ -94,7 +95,12 @@ class Daemon:
         )
         self.controller = Controller(desk)
         stack.callback(self.controller.close, CLOSING_S)
-        found = self.controller.start(adopting(remembered)).result(ADOPTION_S)
+        try:
+            found = self.controller.start(adopting(remembered)).result(ADOPTION_S)
+        except TimeoutError as error:
+            raise InstrumentUnreachable(
+                f"the first look at the instruments took longer than {ADOPTION_S:g} s; every output stays as it is"
+            ) from error
         for words in [*found["differences"], *(f"{k}: {v}" for k, v in found["unreachable"].items())]:
             _log.warning("found at the start: %s", words)
 
@@ -120,8 +126,8 @@ class Daemon:
 def serve(path: Path) -> int:
     """`trapd serve`: run until SIGTERM or SIGINT. Outputs are left as they are."""
     logging.basicConfig(level=logging.INFO, format="%(asctime)s %(levelname)s %(message)s")
-    for chatty in ("alembic", "uvicorn", "pint"):
-        logging.getLogger(chatty).setLevel(logging.WARNING)
+    for chatty, level in (("alembic", logging.WARNING), ("uvicorn", logging.WARNING), ("pint", logging.ERROR)):
+        logging.getLogger(chatty).setLevel(level)
     # Blocked before any thread exists, so that every thread inherits it and only `sigwait` takes them: a handler would run
     # in the main thread only, and the kernel may wake another one.
     ends = {signal.SIGTERM, signal.SIGINT}
@@ -132,18 +138,12 @@ def serve(path: Path) -> int:
         host, port = daemon.address
         _log.info("%s: serving on http://%s:%d and %s", path, host, port, daemon.socket_path)
         if not daemon.simulated:
-            _log.warning("%s", CAUTION)
+            _log.warning("%s", " ".join(CAUTIONS.split()))
         signal.sigwait(ends)
         _log.info("stopping; every output stays as it is")
     finally:
         daemon.stop()
     return 0
-
-
-CAUTION = (
-    "trapd protects the experiment, not people: RF burns, high voltage and stored charge, lasers, vacuum. "
-    "Hardware interlocks come first; local rules and qualified people decide."
-)
 
 
 def _start_draft() -> Draft:

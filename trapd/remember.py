@@ -2,10 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-
 from trapd.controller import Remembered
-from trapd.record import Commanded, Entry, Reader
+from trapd.record import Entry, Reader
 from trapd.setpoint import AMPLITUDE, Contents
 from trapd.wiring import DRIVE_OUTPUT
 
@@ -13,7 +11,7 @@ from trapd.wiring import DRIVE_OUTPUT
 def remember(reader: Reader) -> Remembered:
     """Read before this run writes its own start."""
     state = reader.last_commanded()
-    outputs = _outputs(reader, state.outputs)
+    outputs = {name: command.level == 1.0 for name, command in state.outputs.items()}
     values = {name: command.value for name, command in state.setpoints.items()}
     for name, on in outputs.items():
         if not on:
@@ -29,18 +27,6 @@ def remember(reader: Reader) -> Remembered:
     )
 
 
-def _outputs(reader: Reader, commanded: Mapping[str, Commanded]) -> dict[str, bool]:
-    """By output name. `off` is no intent: where it came later, it counts."""
-    outputs = {name: command.level == 1.0 for name, command in commanded.items()}
-    oldest = min((command.seq for command in commanded.values()), default=0)
-    for entry in reader.entries(kind="off", after=oldest, newest=True):
-        for name, command in commanded.items():
-            report = entry.data["instruments"].get(command.instrument, {"off": False})
-            if entry.seq > command.seq and report["off"]:
-                outputs[name] = False
-    return outputs
-
-
 def _contents(entry: Entry) -> Contents:
     data = entry.data
     return Contents(
@@ -53,6 +39,6 @@ def _contents(entry: Entry) -> Contents:
 
 def _previous(reader: Reader) -> dict[str, float] | None:
     for result in reversed(reader.entries(kind="result", newest=True, limit=100)):
-        if result.data["state"] == "done":
+        if result.data["state"] == "done" and result.data["from"] != result.data["to"]:
             return dict(result.data["from"]) if result.data["returns"] else None
     return None

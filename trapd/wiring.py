@@ -120,6 +120,9 @@ class Wiring:
         instrument, channel = self.address(setpoint)
         factor = self._factor(model, values, setpoint)
         value = realised_value(model, values, setpoint)
+        if setpoint == AMPLITUDE:  # steps that are even in dB have a least level that is none of the even ones in volts
+            scale = self._scales[AMPLITUDE]()
+            value = min(max(value / factor, scale.low), scale.high) * factor
         accuracy = self.accuracy(model, values, setpoint)
         half_margin = displacement(model, values, setpoint) / 2
         return Command(

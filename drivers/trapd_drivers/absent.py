@@ -1,19 +1,19 @@
 """An instrument that does not answer yet stands in its place and opens it at the first call that succeeds.
 
 So a daemon whose supply is dead still owns the synthesizer, and `off` still works. What the profile states of the scales
-is known without the instrument; a limit that only the instrument knows is infinite until it answers.
+is known without the instrument; a limit that only the instrument knows is infinite until it answers. An attempt to open
+it cannot be interrupted; it ends by itself within twice the timeout.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from typing import Generic, TypeVar
+from typing import Any, cast
 
-from trapd_drivers.errors import Malformed, Unreachable
-from trapd_drivers.interfaces import DcSupply, Identity, Instrument, RfSource, Scale, Status
-from trapd_drivers.registry import DriverClass, driver_class
+from trapd_drivers.errors import Malformed, OutOfRange, Unreachable
+from trapd_drivers.interfaces import DcSupply, Instrument, RfSource, Scale
+from trapd_drivers.registry import driver_class
 
-RealT = TypeVar("RealT", bound=Instrument)
 Scales = Mapping[tuple[str, int], Scale]
 
 
@@ -30,38 +30,39 @@ def open_or_absent(name: str, resource: str, *, profile: str = "plain", timeout_
     try:
         return open_()
     except (Unreachable, Malformed):
-        return _absent(driver, resource, open_, driver.scales(profile))
+        scales, kind = driver.scales(profile), cast(type[Instrument], driver)
+        if issubclass(kind, RfSource):
+            return AbsentRfSource(resource, open_, scales)
+        if issubclass(kind, DcSupply):
+            return AbsentDcSupply(resource, open_, scales)
+        raise  # nothing can stand in for it
 
 
-def _absent(driver: DriverClass, resource: str, open_: Callable[[], Instrument], scales: Scales) -> Instrument:
-    assert isinstance(driver, type)
-    if issubclass(driver, RfSource):
-        return AbsentRfSource(resource, open_, scales)
-    if issubclass(driver, DcSupply):
-        return AbsentDcSupply(resource, open_, scales)
-    raise Unreachable(f"{resource}: does not answer, and nothing can stand in for {driver.__name__}")
+def _real(method: str) -> Any:
+    """The real instrument's method of that name, opened for it when need be."""
+
+    def call(self: _Absent, *arguments: Any) -> Any:
+        return getattr(self._take_up(), method)(*arguments)
+
+    return call
 
 
-class _Absent(Generic[RealT]):
+class _Absent(Instrument):
     """The part that all kinds share: one real instrument, opened when it can be."""
 
     def __init__(self, resource: str, open_: Callable[[], Instrument], scales: Scales) -> None:
         self.resource = resource
         self._open = open_
         self._scales = scales
-        self._opened: RealT | None = None
+        self._opened: Any = None
 
-    def _real(self) -> RealT:
+    def _take_up(self) -> Any:
         if self._opened is None:
-            self._opened = self._open()  # type: ignore[assignment]
-        assert self._opened is not None
+            self._opened = self._open()
         return self._opened
 
-    def read_identity(self) -> Identity:
-        return self._real().read_identity()
-
-    def read_status(self) -> Status:
-        return self._real().read_status()
+    read_identity = _real("read_identity")
+    read_status = _real("read_status")
 
     def interrupt(self) -> None:
         if self._opened is not None:
@@ -72,7 +73,7 @@ class _Absent(Generic[RealT]):
             self._opened.close()
 
 
-class AbsentRfSource(_Absent[RfSource], RfSource):
+class AbsentRfSource(_Absent, RfSource):
     """See `RfSource`; every call first tries to reach the instrument."""
 
     @property
@@ -83,29 +84,16 @@ class AbsentRfSource(_Absent[RfSource], RfSource):
     def level(self) -> Scale:  # type: ignore[override]
         return self._scales["level", 0] if self._opened is None else self._opened.level
 
-    def set_frequency_hz(self, frequency_hz: float) -> None:
-        self._real().set_frequency_hz(frequency_hz)
-
-    def read_frequency_hz(self) -> float:
-        return self._real().read_frequency_hz()
-
-    def set_level_v(self, level_v: float) -> None:
-        self._real().set_level_v(level_v)
-
-    def read_level_v(self) -> float:
-        return self._real().read_level_v()
-
-    def measure_level_v(self) -> float | None:
-        return self._real().measure_level_v()
-
-    def set_output(self, on: bool) -> None:
-        self._real().set_output(on)
-
-    def read_output(self) -> bool:
-        return self._real().read_output()
+    set_frequency_hz = _real("set_frequency_hz")
+    read_frequency_hz = _real("read_frequency_hz")
+    set_level_v = _real("set_level_v")
+    read_level_v = _real("read_level_v")
+    measure_level_v = _real("measure_level_v")
+    set_output = _real("set_output")
+    read_output = _real("read_output")
 
 
-class AbsentDcSupply(_Absent[DcSupply], DcSupply):
+class AbsentDcSupply(_Absent, DcSupply):
     """See `DcSupply`; every call first tries to reach the instrument."""
 
     @property
@@ -113,19 +101,12 @@ class AbsentDcSupply(_Absent[DcSupply], DcSupply):
         return tuple(channel for _, channel in self._scales)
 
     def voltage(self, channel: int) -> Scale:
+        if channel not in self.channels:
+            raise OutOfRange(f"{self.resource}: channel {channel} is none of {self.channels}; nothing was sent")
         return self._scales["voltage", channel] if self._opened is None else self._opened.voltage(channel)
 
-    def set_voltage_v(self, channel: int, voltage_v: float) -> None:
-        self._real().set_voltage_v(channel, voltage_v)
-
-    def read_voltage_v(self, channel: int) -> float:
-        return self._real().read_voltage_v(channel)
-
-    def measure_voltage_v(self, channel: int) -> float | None:
-        return self._real().measure_voltage_v(channel)
-
-    def set_output(self, channel: int, on: bool) -> None:
-        self._real().set_output(channel, on)
-
-    def read_output(self, channel: int) -> bool:
-        return self._real().read_output(channel)
+    set_voltage_v = _real("set_voltage_v")
+    read_voltage_v = _real("read_voltage_v")
+    measure_voltage_v = _real("measure_voltage_v")
+    set_output = _real("set_output")
+    read_output = _real("read_output")

@@ -6,7 +6,6 @@ A blocked `recv` or `send` cannot watch its own clock, and one watcher for each 
 from __future__ import annotations
 
 import heapq
-import itertools
 import logging
 import threading
 import time
@@ -18,27 +17,17 @@ _log = logging.getLogger(__name__)
 class Deadline:
     """One action that will run unless `cancel` comes first. Cancelling costs no lock and may come too late."""
 
-    __slots__ = ("_action", "due_s")
+    __slots__ = ("action", "due_s")
 
     def __init__(self, due_s: float, action: Callable[[], None]) -> None:
         self.due_s = due_s
-        self._action: Callable[[], None] | None = action
-
-    @property
-    def cancelled(self) -> bool:
-        return self._action is None
+        self.action: Callable[[], None] | None = action
 
     def cancel(self) -> None:
-        self._action = None
+        self.action = None
 
-    def run(self) -> None:
-        action, self._action = self._action, None
-        if action is None:
-            return
-        try:
-            action()
-        except Exception:
-            _log.exception("an overdue action failed")
+    def __lt__(self, other: Deadline) -> bool:
+        return self.due_s < other.due_s
 
 
 class Deadlines:
@@ -50,9 +39,8 @@ class Deadlines:
 
     def __init__(self) -> None:
         self._changed = threading.Condition()
-        self._queue: list[tuple[float, int, Deadline]] = []
-        self._order = itertools.count()
-        self._wakes_s = float("inf")
+        self._queue: list[Deadline] = []
+        self._wakes_s = float("-inf")  # when the thread will look by itself; it looks anyway when it is not waiting
         self._thread: threading.Thread | None = None
 
     def after(self, delay_s: float, action: Callable[[], None]) -> Deadline:
@@ -62,7 +50,7 @@ class Deadlines:
             if self._thread is None:
                 self._thread = threading.Thread(target=self._run, name="deadline", daemon=True)
                 self._thread.start()
-            heapq.heappush(self._queue, (deadline.due_s, next(self._order), deadline))
+            heapq.heappush(self._queue, deadline)
             # Most deadlines lie behind one that is already waited for: waking the thread for each would cost more
             # than the exchange that it guards.
             if deadline.due_s < self._wakes_s:
@@ -71,21 +59,23 @@ class Deadlines:
 
     def _run(self) -> None:
         while True:
-            for deadline in self._take_due():
-                deadline.run()
+            action = self._next_due().action
+            try:
+                if action is not None:
+                    action()
+            except Exception:
+                _log.exception("an overdue action failed")
 
-    def _take_due(self) -> list[Deadline]:
+    def _next_due(self) -> Deadline:
         with self._changed:
-            while self._queue and self._queue[0][2].cancelled:
-                heapq.heappop(self._queue)
-            due: list[Deadline] = []
-            while self._queue and self._queue[0][0] <= time.monotonic():
-                due.append(heapq.heappop(self._queue)[2])
-            if not due:
-                self._wakes_s = self._queue[0][0] if self._queue else float("inf")
-                self._changed.wait(self._wakes_s - time.monotonic() if self._queue else None)
+            while True:
+                while self._queue and self._queue[0].action is None:
+                    heapq.heappop(self._queue)
+                if self._queue and self._queue[0].due_s <= time.monotonic():
+                    return heapq.heappop(self._queue)
+                self._wakes_s = self._queue[0].due_s if self._queue else float("inf")
+                self._changed.wait(min(self._wakes_s - time.monotonic(), threading.TIMEOUT_MAX))
                 self._wakes_s = float("-inf")
-            return due
 
 
 DEADLINES = Deadlines()

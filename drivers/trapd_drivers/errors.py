@@ -9,7 +9,8 @@
     └── ProfileError       the dialect profile or the driver's name is wrong; nothing was opened
 
 After `Unreachable`, `Malformed` and `WrongIdentity` the session has been dropped; the next call reopens it, checks the
-identity and reads nothing on its own. After the others the session is still in step.
+identity and looks for a power-on and queued errors (which `read_status` then tells), so that none is blamed on the next
+command. After the others the session is still in step.
 """
 
 from __future__ import annotations

@@ -7,6 +7,8 @@ from dataclasses import dataclass
 from functools import cache
 from string import Formatter
 
+from trapd_drivers.errors import Malformed
+
 
 @dataclass(frozen=True)
 class Form:
@@ -30,13 +32,15 @@ class Form:
     def written(self, *, value: str = "", channel: int = 0) -> str:
         return self.text.format(value=value, channel=channel)
 
-    def found(self, reply: str, *, channel: int = 0) -> str | None:
-        """The text in place of ``{value}``, None when the reply does not have this form.
+    def undressed(self, reply: str, channel: int = 0) -> str:
+        """The text in place of ``{value}``; `Malformed` when the reply does not have this form.
 
         Case and the number of blanks do not matter: IEEE 488.2 headers and words have no case.
         """
         match = _pattern(self.text, channel).fullmatch(reply)
-        return match["value"] if match else None
+        if match is None:
+            raise Malformed(f"{reply[:80]!r} does not read {self.text!r}")
+        return match["value"]
 
 
 @cache

@@ -90,7 +90,10 @@ class Link:
         Opening, when it is needed, has the timeout once more. Whatever is raised inside drops the session, except
         `InstrumentRefused`, after which both sides still agree on what was said.
         """
-        self._begin()
+        with self._lock:
+            self._busy = True
+            self._cut_by = None
+            self._cut.clear()
         try:
             if self._socket is None or not self._is_silent():
                 self._open()
@@ -155,12 +158,6 @@ class Link:
         """End the session; may be called again. A later call opens a new one."""
         self._drop()
 
-    def _begin(self) -> None:
-        with self._lock:
-            self._busy = True
-            self._cut_by = None
-            self._cut.clear()
-
     @contextmanager
     def _limited(self) -> Iterator[None]:
         with self._lock:
@@ -202,12 +199,10 @@ class Link:
         return self._socket
 
     def _receive(self, query: str) -> bytes:
-        while (end := self._received.find(self._end)) < 0:
-            if len(self._received) > self._wire.longest_reply_bytes:
-                break
+        longest = self._wire.longest_reply_bytes
+        while (end := self._received.find(self._end)) < 0 and len(self._received) <= longest:
             self._received += self._receive_some(query)
-        if end < 0 or end > self._wire.longest_reply_bytes:
-            longest = self._wire.longest_reply_bytes
+        if not 0 <= end <= longest:
             raise Malformed(f"{self.resource}: {query!r} was answered by a line of more than {longest} bytes")
         line = bytes(self._received[:end])
         del self._received[: end + len(self._end)]

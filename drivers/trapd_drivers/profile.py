@@ -12,11 +12,14 @@ from pathlib import Path
 
 from trapd_drivers.errors import ProfileError
 from trapd_drivers.form import Form
+from trapd_drivers.interfaces import Scale
 from trapd_drivers.link import Wire
 from trapd_drivers.quantity import DC_UNITS, FREQUENCY_UNITS, LEVEL_UNITS, Quantity, Reading, Unit
 from trapd_drivers.table import Table
 
 _SHIPPED = Path(__file__).parent / "profiles"
+Key = tuple[str, int]
+"""A quantity ("frequency", "level" or "voltage") and its channel, 0 where there are no channels."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -34,63 +37,49 @@ class StatusDialect:
 
 
 @dataclass(frozen=True, kw_only=True)
-class OutputDialect:
-    """Switching an output. Without a query its state is what it was last told, and on before that."""
-
-    on: Form
-    off: Form
-    query: Form | None
-    reply: Form
-    on_words: frozenset[str]
-    off_words: frozenset[str]
-
-
-@dataclass(frozen=True, kw_only=True)
-class TripDialect:
-    """Asking whether a protection has latched an output off; ``words`` are the replies that mean yes."""
+class Question:
+    """A query that tells yes or no. What is neither is malformed; without ``no`` everything but yes means no."""
 
     query: Form
     reply: Form
-    words: frozenset[str]
+    yes: frozenset[str]
+    no: frozenset[str] | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
-class RfSourceDialect:
-    settle_s: float
-    frequency: Quantity
-    level: Quantity
-    output: OutputDialect
-    trip: TripDialect | None
+class Dialect:
+    """One kind of instrument. ``output`` asks whether it is on, ``trip`` whether a protection has latched it off."""
 
-
-@dataclass(frozen=True, kw_only=True)
-class DcSupplyDialect:
     settle_s: float
-    voltages: Mapping[int, Quantity]
-    output: OutputDialect
-    trip: TripDialect | None
+    quantities: Mapping[Key, Quantity]
+    on: Form
+    off: Form
+    output: Question | None
+    trip: Question | None
+
+    @property
+    def channels(self) -> tuple[int, ...]:
+        return tuple(dict.fromkeys(channel for _, channel in self.quantities))
+
+    def scales(self) -> dict[Key, Scale]:
+        """As far as the profile states them; a limit that only the instrument knows is infinite."""
+        return {key: quantity.scale() for key, quantity in self.quantities.items()}
 
 
 @dataclass(frozen=True, kw_only=True)
 class Profile:
-    """One dialect. A part that the file leaves out is None: the profile then does not serve that kind of instrument."""
+    """One dialect of each kind of instrument that the file has a table for: "rf_source", "dc_supply"."""
 
     name: str
     wire: Wire
     timeout_s: float
     status: StatusDialect
-    rf_source: RfSourceDialect | None
-    dc_supply: DcSupplyDialect | None
+    kinds: Mapping[str, Dialect]
 
-    def require_rf_source(self) -> RfSourceDialect:
-        if self.rf_source is None:
-            raise ProfileError(f"profile {self.name}: has no [rf_source]; nothing was opened")
-        return self.rf_source
-
-    def require_dc_supply(self) -> DcSupplyDialect:
-        if self.dc_supply is None:
-            raise ProfileError(f"profile {self.name}: has no [dc_supply]; nothing was opened")
-        return self.dc_supply
+    def dialect(self, kind: str) -> Dialect:
+        if kind not in self.kinds:
+            raise ProfileError(f"profile {self.name}: has no [{kind}]; nothing was opened")
+        return self.kinds[kind]
 
 
 def shipped_profiles() -> tuple[str, ...]:
@@ -105,94 +94,96 @@ def load_profile(name: str) -> Profile:
             "nothing was opened"
         )
     table = Table.read(Path(name) if name.endswith(".toml") else _SHIPPED / f"{name}.toml")
+    kinds = {"rf_source": _rf_source, "dc_supply": _dc_supply}
     wire = table.table("wire")
     profile = Profile(
         name=name,
         timeout_s=wire.number("timeout_s", 0.0, at_least=0.0),
         wire=_wire(wire),
         status=_status(table.table("status")),
-        rf_source=_rf_source(table.table("rf_source")) if "rf_source" in table else None,
-        dc_supply=_dc_supply(table.table("dc_supply")) if "dc_supply" in table else None,
+        kinds={kind: read(table.table(kind)) for kind, read in kinds.items() if kind in table},
     )
     table.finish()
     return profile
 
 
 def _wire(table: Table) -> Wire:
-    wire = Wire(
-        write_end=_end(table, "write_end"),
-        read_end=_end(table, "read_end"),
+    ends = ("\n", "\r\n", "\r")
+    return Wire(
+        write_end=table.choice("write_end", ends, "\n"),
+        read_end=table.choice("read_end", ends, "\n"),
         longest_reply_bytes=int(table.number("longest_reply_bytes", 4096, at_least=64)),
         spacing_s=table.number("spacing_s", 0.0, at_least=0.0),
     )
-    table.finish()
-    return wire
-
-
-def _end(table: Table, key: str) -> str:
-    return table.choice(key, ("\n", "\r\n", "\r"), "\n")
 
 
 def _status(table: Table) -> StatusDialect:
-    status = StatusDialect(
+    return StatusDialect(
         identity=_form(table, "identity", "*IDN?").text,
         events=_form(table, "events").text if "events" in table else None,
         error=_form(table, "error", "SYST:ERR?").text,
-        error_reply=_form(table, "error_reply", "{value}", needs={"value"}),
+        error_reply=_reply(table, "error_reply"),
         error_joined=table.flag("error_joined", True),
         ignored=frozenset(table.integers("ignored", ())),
         power_on=frozenset(table.integers("power_on", (-500,))),
         trip=frozenset(table.integers("trip", ())),
     )
-    table.finish()
-    return status
 
 
-def _rf_source(table: Table) -> RfSourceDialect:
-    dialect = RfSourceDialect(
-        settle_s=table.number("settle_s", 0.0, at_least=0.0),
-        frequency=_quantity(table.table("frequency", required=True), tuple(FREQUENCY_UNITS), set()),
-        level=_quantity(table.table("level", required=True), tuple(LEVEL_UNITS), set()),
-        output=_output(table.table("output", required=True), set()),
-        trip=_trip(table.table("trip"), set()) if "trip" in table else None,
-    )
-    table.finish()
-    return dialect
+def _rf_source(table: Table) -> Dialect:
+    frequency = _quantity(table.table("frequency", required=True), tuple(FREQUENCY_UNITS), set())
+    level = _quantity(table.table("level", required=True), tuple(LEVEL_UNITS), set())
+    return _dialect(table, {("frequency", 0): frequency, ("level", 0): level}, set())
 
 
-def _dc_supply(table: Table) -> DcSupplyDialect:
+def _dc_supply(table: Table) -> Dialect:
     channels = table.integers("channels")
     if not channels or len(set(channels)) < len(channels) or min(channels) < 1:
         raise table.error("channels", "different channel numbers from 1")
-    names: set[str] = {"channel"} if len(channels) > 1 else set()
+    names = {"channel"} if len(channels) > 1 else set()
     voltage, changes = table.table("voltage", required=True), table.table("channel")
     for key in changes.names():
         if key not in map(str, channels):
             raise changes.error(key, f"one of the channels {channels}")
-    dialect = DcSupplyDialect(
+    voltages = {
+        ("voltage", channel): _quantity(voltage.merged(changes.table(str(channel))), tuple(DC_UNITS), names)
+        for channel in channels
+    }
+    return _dialect(table, voltages, names)
+
+
+def _dialect(table: Table, quantities: Mapping[Key, Quantity], names: set[str]) -> Dialect:
+    output = table.table("output", required=True)
+    return Dialect(
         settle_s=table.number("settle_s", 0.0, at_least=0.0),
-        voltages={
-            channel: _quantity(voltage.merged(changes.table(str(channel))), tuple(DC_UNITS), names)
-            for channel in channels
-        },
-        output=_output(table.table("output", required=True), names),
+        quantities=quantities,
+        on=_form(output, "on", needs=names),
+        off=_form(output, "off", needs=names),
+        output=_output(output, names),
         trip=_trip(table.table("trip"), names) if "trip" in table else None,
     )
-    table.finish()
-    return dialect
+
+
+def _output(table: Table, names: set[str]) -> Question | None:
+    reply, yes, no = _reply(table), table.words("on_words", ("1", "ON")), table.words("off_words", ("0", "OFF"))
+    if yes & no:
+        raise table.error("off_words", "words that do not also mean on")
+    if "query" not in table:
+        return None
+    return Question(query=_form(table, "query", needs=names), reply=reply, yes=yes, no=no)
+
+
+def _trip(table: Table, names: set[str]) -> Question:
+    yes = table.words("words", ("1", "ON"))
+    return Question(query=_form(table, "query", needs=names), reply=_reply(table), yes=yes)
 
 
 def _quantity(table: Table, units: tuple[str, ...], names: set[str]) -> Quantity:
-    unit = _unit(table, "unit", table.choice("unit", units))
-    reply_unit = _unit(table, "reply_unit", table.choice("reply_unit", units, unit.name))
+    name = table.choice("unit", units)
     quantity = Quantity(
-        unit=unit,
+        unit=_unit(table, name),
         set=_form(table, "set", needs={"value"} | names),
-        programmed=Reading(
-            query=_form(table, "query", needs=names),
-            reply=_form(table, "reply", "{value}", needs={"value"}),
-            unit=reply_unit,
-        ),
+        programmed=_reading(table, table.choice("reply_unit", units, name), names),
         measured=_measured(table.table("measure"), units, names) if "measure" in table else None,
         low=_limit(table, "low", names),
         high=_limit(table, "high", names),
@@ -203,11 +194,18 @@ def _quantity(table: Table, units: tuple[str, ...], names: set[str]) -> Quantity
     )
     if isinstance(quantity.low, float) and isinstance(quantity.high, float) and quantity.low >= quantity.high:
         raise table.error("high", f"a number above low = {quantity.low:g}")
-    table.finish()
     return quantity
 
 
-def _unit(table: Table, key: str, name: str) -> Unit:
+def _measured(table: Table, units: tuple[str, ...], names: set[str]) -> Reading:
+    return _reading(table, table.choice("unit", units), names)
+
+
+def _reading(table: Table, unit: str, names: set[str]) -> Reading:
+    return Reading(query=_form(table, "query", needs=names), reply=_reply(table), unit=_unit(table, unit))
+
+
+def _unit(table: Table, name: str) -> Unit:
     return Unit(
         name=name,
         load_factor=table.number("load_factor", 1.0, above=0.0),
@@ -215,47 +213,12 @@ def _unit(table: Table, key: str, name: str) -> Unit:
     )
 
 
-def _measured(table: Table, units: tuple[str, ...], names: set[str]) -> Reading:
-    reading = Reading(
-        query=_form(table, "query", needs=names),
-        reply=_form(table, "reply", "{value}", needs={"value"}),
-        unit=_unit(table, "unit", table.choice("unit", units)),
-    )
-    table.finish()
-    return reading
-
-
 def _limit(table: Table, key: str, names: set[str]) -> float | Form:
     return _form(table, key, needs=names) if table.is_text(key) else table.number(key)
 
 
-def _output(table: Table, names: set[str]) -> OutputDialect:
-    output = OutputDialect(
-        on=_form(table, "on", needs=names),
-        off=_form(table, "off", needs=names),
-        query=_form(table, "query", needs=names) if "query" in table else None,
-        reply=_form(table, "reply", "{value}", needs={"value"}),
-        on_words=_words(table, "on_words", ("1", "ON")),
-        off_words=_words(table, "off_words", ("0", "OFF")),
-    )
-    if output.on_words & output.off_words:
-        raise table.error("off_words", "words that do not also mean on")
-    table.finish()
-    return output
-
-
-def _trip(table: Table, names: set[str]) -> TripDialect:
-    trip = TripDialect(
-        query=_form(table, "query", needs=names),
-        reply=_form(table, "reply", "{value}", needs={"value"}),
-        words=_words(table, "words", ("1", "ON")),
-    )
-    table.finish()
-    return trip
-
-
-def _words(table: Table, key: str, default: tuple[str, ...]) -> frozenset[str]:
-    return frozenset(word.upper() for word in table.texts(key, default))
+def _reply(table: Table, key: str = "reply") -> Form:
+    return _form(table, key, "{value}", needs={"value"})
 
 
 def _form(table: Table, key: str, default: str | None = None, *, needs: set[str] | None = None) -> Form:

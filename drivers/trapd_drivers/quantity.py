@@ -90,7 +90,7 @@ class Quantity:
         """
         low = self._limit(self.low, ask, -math.inf)
         high = self._limit(self.high, ask, math.inf)
-        boundaries = tuple(self.unit.to_si(number) for number in self.boundaries)
+        boundaries = tuple(map(self.unit.to_si, self.boundaries))
         if not self.unit.logarithmic:
             return Scale(
                 low=low,

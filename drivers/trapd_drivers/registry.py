@@ -5,7 +5,6 @@ A registered class is an `interfaces.Instrument` with two class methods of its o
 
 from __future__ import annotations
 
-from collections import Counter
 from collections.abc import Mapping
 from importlib.metadata import EntryPoint, entry_points
 from typing import Protocol, cast
@@ -41,14 +40,13 @@ def driver_class(name: str) -> DriverClass:
     if name not in registered:
         known = ", ".join(sorted(registered)) or "none, the package is not installed"
         raise ProfileError(f"driver {name!r}: unknown; registered are {known}; nothing was opened")
+    entry = registered[name]
     try:
-        loaded = registered[name].load()
+        loaded = entry.load()
     except (ImportError, AttributeError) as error:
-        raise ProfileError(
-            f"driver {name!r}: {registered[name].value} cannot be loaded ({error}); nothing was opened"
-        ) from error
+        raise ProfileError(f"driver {name!r}: {entry.value} cannot be loaded ({error}); nothing was opened") from error
     if not (isinstance(loaded, type) and issubclass(loaded, Instrument)):
-        raise ProfileError(f"driver {name!r}: {registered[name].value} is no Instrument class; nothing was opened")
+        raise ProfileError(f"driver {name!r}: {entry.value} is no Instrument class; nothing was opened")
     return cast(DriverClass, loaded)
 
 
@@ -64,10 +62,11 @@ def scales_of(name: str, profile: str = "plain") -> Mapping[tuple[str, int], Sca
 
 def _registered() -> dict[str, EntryPoint]:
     found = entry_points(group=GROUP)
-    for name, count in Counter(one.name for one in found).items():
+    named = {one.name: one for one in found}
+    for name in named:
         values = sorted({one.value for one in found if one.name == name})
-        if count > 1 and len(values) > 1:
+        if len(values) > 1:
             raise ProfileError(
                 f"driver {name!r}: registered more than once, as {', '.join(values)}; nothing was opened"
             )
-    return {one.name: one for one in found}
+    return named

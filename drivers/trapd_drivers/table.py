@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -21,6 +21,7 @@ class Table:
         self._file = file
         self._path = path
         self._taken: set[str] = set()
+        self._parts: list[Table] = []
 
     @classmethod
     def read(cls, file: Path) -> Table:
@@ -39,60 +40,50 @@ class Table:
         return ProfileError(f"{self._file}: {self._name(key)}{found}; expected {expected}; nothing was opened")
 
     def text(self, key: str, default: str = _MISSING) -> str:
-        value = self._take(key, default, "a string")
-        if not isinstance(value, str):
-            raise self.error(key, "a string")
+        value: str = self._take(key, default, "a string", lambda found: isinstance(found, str))
         return value
 
     def choice(self, key: str, choices: tuple[str, ...], default: str = _MISSING) -> str:
-        value = self.text(key, default)
-        if value not in choices:
-            raise self.error(key, f"one of {', '.join(choices)}")
+        value: str = self._take(key, default, f"one of {', '.join(choices)}", lambda found: found in choices)
         return value
 
     def number(
         self, key: str, default: float = _MISSING, *, at_least: float = -math.inf, above: float = -math.inf
     ) -> float:
-        value = self._take(key, default, "a number")
-        if not _is_number(value) or not at_least <= value or not above < value:
-            bound = f" of at least {at_least:g}" if at_least > -math.inf else ""
-            raise self.error(key, f"a number{bound}" + (f" above {above:g}" if above > -math.inf else ""))
-        return float(value)
+        bounds = f" of at least {at_least:g}" if at_least > -math.inf else ""
+        bounds += f" above {above:g}" if above > -math.inf else ""
+        return float(
+            self._take(key, default, f"a number{bounds}", lambda it: _is_number(it) and at_least <= it and above < it)
+        )
 
-    def numbers(self, key: str, default: tuple[float, ...] = _MISSING) -> tuple[float, ...]:
-        value = self._take(key, default, "a list of numbers")
-        if not isinstance(value, list | tuple) or not all(_is_number(one) for one in value):
-            raise self.error(key, "a list of numbers")
-        return tuple(float(one) for one in value)
+    def numbers(self, key: str, default: tuple[float, ...]) -> tuple[float, ...]:
+        return tuple(float(one) for one in self._take(key, default, "a list of numbers", _each(_is_number)))
 
     def integers(self, key: str, default: tuple[int, ...] = _MISSING) -> tuple[int, ...]:
-        value = self._take(key, default, "a list of whole numbers")
-        if not isinstance(value, list | tuple) or not all(_is_number(one) and isinstance(one, int) for one in value):
-            raise self.error(key, "a list of whole numbers")
-        return tuple(value)
+        return tuple(self._take(key, default, "a list of whole numbers", _each(lambda one: type(one) is int)))
 
-    def texts(self, key: str, default: tuple[str, ...]) -> tuple[str, ...]:
-        value = self._take(key, default, "a list of strings")
-        if not isinstance(value, list | tuple) or not value or not all(isinstance(one, str) for one in value):
-            raise self.error(key, "a list of strings")
-        return tuple(value)
+    def words(self, key: str, default: tuple[str, ...]) -> frozenset[str]:
+        """A list of strings, in upper case."""
+        fits = _each(lambda one: isinstance(one, str))
+        found = self._take(key, default, "a list of strings", lambda found: fits(found) and len(found) > 0)
+        return frozenset(word.upper() for word in found)
 
     def flag(self, key: str, default: bool) -> bool:
-        value = self._take(key, default, "true or false")
-        if not isinstance(value, bool):
-            raise self.error(key, "true or false")
+        value: bool = self._take(key, default, "true or false", lambda found: isinstance(found, bool))
         return value
 
     def table(self, key: str, *, required: bool = False) -> Table:
         """The table of that key; an empty one when it is missing and not required."""
-        value = self._take(key, _MISSING if required else {}, "a table")
-        if not isinstance(value, dict):
-            raise self.error(key, "a table")
-        return Table(value, self._file, self._name(key))
+        data = self._take(key, _MISSING if required else {}, "a table", lambda found: isinstance(found, dict))
+        self._parts.append(Table(data, self._file, self._name(key)))
+        return self._parts[-1]
 
     def merged(self, changes: Table) -> Table:
-        """This table with the keys of ``changes`` in place of its own."""
-        return Table({**self._data, **changes._data}, self._file, changes._path)
+        """This table with the keys of ``changes`` in place of its own; a key taken from it is taken from both."""
+        both = Table({**self._data, **changes._data}, self._file, changes._path)
+        self._taken = changes._taken = both._taken
+        changes._parts.append(both)
+        return both
 
     def names(self) -> tuple[str, ...]:
         return tuple(self._data)
@@ -101,18 +92,20 @@ class Table:
         return isinstance(self._data.get(key), str)
 
     def finish(self) -> None:
-        """Refuse the keys that nobody took."""
+        """Refuse the keys that nobody took, here and in every table taken from this one."""
         for key in self._data:
             if key not in self._taken:
                 known = ", ".join(sorted(self._taken))
                 raise ProfileError(
                     f"{self._file}: {self._name(key)}: unknown key; expected one of {known}; nothing was opened"
                 )
+        for part in self._parts:
+            part.finish()
 
-    def _take(self, key: str, default: Any, expected: str) -> Any:
+    def _take(self, key: str, default: Any, expected: str, fits: Callable[[Any], bool]) -> Any:
         self._taken.add(key)
         value = self._data.get(key, default)
-        if value is _MISSING:
+        if value is _MISSING or not fits(value):
             raise self.error(key, expected)
         return value
 
@@ -122,3 +115,7 @@ class Table:
 
 def _is_number(value: object) -> bool:
     return isinstance(value, int | float) and not isinstance(value, bool) and math.isfinite(value)
+
+
+def _each(fits: Callable[[Any], bool]) -> Callable[[Any], bool]:
+    return lambda found: isinstance(found, list | tuple) and all(map(fits, found))

@@ -18,8 +18,8 @@ from trapd_simulated.settings import (
     RackSettings,
     ResonatorSettings,
     RfSourceSettings,
+    load,
 )
-from trapd_simulated.settings_file import load
 
 __all__ = [
     "ChannelSettings",

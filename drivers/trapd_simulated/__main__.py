@@ -16,8 +16,7 @@ from pathlib import Path
 from trapd_simulated.control import ControlServer
 from trapd_simulated.errors import RackError
 from trapd_simulated.rack import Rack
-from trapd_simulated.settings import RackSettings
-from trapd_simulated.settings_file import load
+from trapd_simulated.settings import RackSettings, load
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -27,11 +26,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
         if options.port_base:
             settings = _with_ports(settings, options.port_base)
         _run(settings, options)
-    except (RackError, ValueError) as error:
-        print(error, file=sys.stderr)
-        return 2
-    except OSError as error:
-        print(f"{error}; the rack was not started", file=sys.stderr)
+    except (RackError, ValueError, OSError) as error:
+        print(f"{error}; the rack was not started" if isinstance(error, OSError) else error, file=sys.stderr)
         return 2
     return 0
 
@@ -43,24 +39,17 @@ def _parser() -> argparse.ArgumentParser:
     parser.add_argument("--speed", type=float, default=1.0, metavar="X", help="rack seconds per second")
     parser.add_argument("--port-base", type=int, default=0, metavar="N", help="N, N+1, ...: instruments, then control")
     parser.add_argument("--log", type=Path, metavar="FILE", help="append each received message as a JSON line")
-    parser.add_argument(
-        "--print-ports",
-        action=argparse.BooleanOptionalAction,
-        default=True,
-        help="one JSON line on stdout when all ports listen",
-    )
+    told = "one JSON line on stdout when all ports listen"
+    parser.add_argument("--print-ports", action=argparse.BooleanOptionalAction, default=True, help=told)
     return parser
 
 
 def _with_ports(settings: RackSettings, base: int) -> RackSettings:
-    if not 1 <= base <= 65535 - len(settings.instruments):
-        raise RackError(
-            f"--port-base {base}: {len(settings.instruments)} ports and one more do not fit; nothing started"
-        )
-    instruments = {
-        name: replace(one, port=base + index) for index, (name, one) in enumerate(settings.instruments.items())
-    }
-    return replace(settings, instruments=instruments, control_port=base + len(instruments))
+    count = len(settings.instruments)
+    if not 1 <= base <= 65535 - count:
+        raise RackError(f"--port-base {base}: {count} ports and one more do not fit; nothing started")
+    instruments = {name: replace(one, port=base + at) for at, (name, one) in enumerate(settings.instruments.items())}
+    return replace(settings, instruments=instruments, control_port=base + count)
 
 
 def _run(settings: RackSettings, options: argparse.Namespace) -> None:
@@ -72,18 +61,11 @@ def _run(settings: RackSettings, options: argparse.Namespace) -> None:
     with Rack(settings, seed=options.seed, speed=options.speed, log=options.log) as rack:
         control = ControlServer(rack, settings.control_port, quitting)
         if options.print_ports:
-            _announce(rack, control.port)
+            with suppress(OSError):
+                print(json.dumps({**rack.describe(), "control": control.port, "pid": os.getpid()}), flush=True)
         quitting.wait()
         control.shutdown()
         control.server_close()
-
-
-def _announce(rack: Rack, control_port: int) -> None:
-    kinds = rack.kinds
-    instruments = {name: {"port": port, "kind": kinds[name]} for name, port in rack.ports.items()}
-    line = {"instruments": instruments, "control": control_port, "pid": os.getpid(), "speed": rack.speed}
-    with suppress(OSError):
-        print(json.dumps(line), flush=True)
 
 
 if __name__ == "__main__":

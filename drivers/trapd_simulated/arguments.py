@@ -5,9 +5,10 @@ from __future__ import annotations
 import math
 
 from trapd_simulated.errors import ScpiError
-from trapd_simulated.syntax import ChannelList, Number, Parameter, Quoted, Word
+from trapd_simulated.syntax import Kind, Parameter
 
 _PREFIXES = {"G": 1e9, "MA": 1e6, "K": 1e3, "": 1.0, "M": 1e-3, "U": 1e-6, "N": 1e-9}
+_NOT_ALLOWED = {Kind.NUMBER: -128, Kind.WORD: -148, Kind.STRING: -158, Kind.CHANNELS: -178}
 
 
 def scales(unit: str) -> dict[str, float]:
@@ -23,17 +24,18 @@ class Arguments:
     def __init__(self, parameters: tuple[Parameter, ...]) -> None:
         self._left = list(parameters)
 
-    def take(self) -> Parameter:
-        """The next parameter, not judged yet; -109 when there is none."""
+    def take(self, *kinds: Kind) -> Parameter:
+        """The next parameter, one of ``kinds`` (any when none is given); -109 when there is none."""
         if not self._left:
             raise ScpiError(-109)
-        return self._left.pop(0)
+        found = self._left.pop(0)
+        if kinds and found.kind not in kinds:
+            raise ScpiError(_NOT_ALLOWED[found.kind])
+        return found
 
     def take_before_channels(self) -> tuple[Parameter, ...]:
         """The next parameter unless there is none or it is a channel list."""
-        if not self._left or isinstance(self._left[0], ChannelList):
-            return ()
-        return (self.take(),)
+        return (self.take(),) if self._left and self._left[0].kind is not Kind.CHANNELS else ()
 
     def done(self) -> None:
         if self._left:
@@ -41,14 +43,12 @@ class Arguments:
 
     def quantity(self, units: dict[str, float], low: float, high: float, default_unit: str) -> float:
         """A number, its suffix one of ``units``, or MINimum or MAXimum; -222 outside ``low`` .. ``high``."""
-        found = self.take()
-        if isinstance(found, Word):
-            return self._extreme(found, low, high)
-        if not isinstance(found, Number):
-            raise _not_allowed(found)
-        suffix = found.suffix or default_unit
+        found = self.take(Kind.NUMBER, Kind.WORD)
+        if found.kind is Kind.WORD:
+            return _extreme(found.text, low, high)
+        suffix = found.text or default_unit
         if suffix not in units:
-            raise ScpiError(-131, found.suffix)
+            raise ScpiError(-131, found.text)
         value = found.value * units[suffix]
         slack = 1e-9 * max(abs(low), abs(high))  # what binary fractions may add to a decimal bound
         if not (math.isfinite(value) and low - slack <= value <= high + slack):
@@ -57,51 +57,36 @@ class Arguments:
 
     def extreme(self, low: float, high: float) -> float | None:
         """MINimum or MAXimum of a query; None when the query has no parameter."""
-        if not self._left:
-            return None
-        found = self.take()
-        if not isinstance(found, Word):
-            raise _not_allowed(found)
-        return self._extreme(found, low, high)
-
-    @staticmethod
-    def _extreme(word: Word, low: float, high: float) -> float:
-        if word.text in ("MIN", "MINIMUM"):
-            return low
-        if word.text in ("MAX", "MAXIMUM"):
-            return high
-        raise ScpiError(-141, word.text)
+        return _extreme(self.take(Kind.WORD).text, low, high) if self._left else None
 
     def integer(self, low: int, high: int) -> int:
-        found = self.take()
-        if not isinstance(found, Number):
-            raise _not_allowed(found)
-        if found.suffix:
-            raise ScpiError(-138, found.suffix)
-        if not low <= found.value < high + 0.5:
-            raise ScpiError(-222, f"{found.value:g} is outside {low} .. {high}")
-        return math.floor(found.value + 0.5)
+        value = self._bare(self.take(Kind.NUMBER))
+        if not low <= value < high + 0.5:
+            raise ScpiError(-222, f"{value:g} is outside {low} .. {high}")
+        return math.floor(value + 0.5)
 
     def boolean(self) -> bool:
         """ON, OFF or a number; a number is rounded and is ON unless it is 0 (SCPI-1999 7.3)."""
-        found = self.take()
-        if isinstance(found, Word):
-            if found.text not in ("ON", "OFF"):
-                raise ScpiError(-141, found.text)
-            return found.text == "ON"
-        if not isinstance(found, Number):
-            raise _not_allowed(found)
-        if found.suffix:
-            raise ScpiError(-138, found.suffix)
-        return abs(found.value) >= 0.5
+        found = self.take(Kind.NUMBER, Kind.WORD)
+        if found.kind is Kind.NUMBER:
+            return abs(self._bare(found)) >= 0.5
+        if found.text not in ("ON", "OFF"):
+            raise ScpiError(-141, found.text)
+        return found.text == "ON"
 
     def channels(self) -> tuple[int, ...]:
-        found = self.take()
-        if not isinstance(found, ChannelList):
-            raise _not_allowed(found)
-        return found.channels
+        return self.take(Kind.CHANNELS).channels
+
+    @staticmethod
+    def _bare(number: Parameter) -> float:
+        if number.text:
+            raise ScpiError(-138, number.text)
+        return number.value
 
 
-def _not_allowed(found: Parameter) -> ScpiError:
-    codes = {Number: -128, Word: -148, Quoted: -158, ChannelList: -178}
-    return ScpiError(codes[type(found)])
+def _extreme(word: str, low: float, high: float) -> float:
+    if word in ("MIN", "MINIMUM"):
+        return low
+    if word in ("MAX", "MAXIMUM"):
+        return high
+    raise ScpiError(-141, word)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from trapd_simulated.clock import Timeline
 from trapd_simulated.settings import ChannelSettings
@@ -18,12 +18,12 @@ class Ramp:
     """
 
     start_s: float
-    from_v: float
-    to_v: float
-    electrode_from_v: float
+    from_v: float = 0.0
+    to_v: float = 0.0
+    electrode_from_v: float = 0.0
     slew_v_per_s: float
     lag_s: float
-    on: bool
+    on: bool = False
 
     @property
     def slew_ends_s(self) -> float:
@@ -39,14 +39,14 @@ class Ramp:
     def electrode_v(self, time_s: float) -> float:
         if self.lag_s == 0.0:
             return self.terminal_v(time_s)
-        since_s, ends_s = time_s - self.start_s, self.slew_ends_s
+        since_s = time_s - self.start_s
+        slewed_s = min(since_s, self.slew_ends_s)
         slope = math.copysign(self.slew_v_per_s, self.to_v - self.from_v)
-        slewed_s = min(since_s, ends_s)
         behind_v = slope * self.lag_s
         lagging_v = self.electrode_from_v - self.from_v + behind_v
         value = self.from_v + slope * slewed_s - behind_v + lagging_v * math.exp(-slewed_s / self.lag_s)
-        if since_s > ends_s:
-            value = self.to_v + (value - self.to_v) * math.exp(-(since_s - ends_s) / self.lag_s)
+        if since_s > slewed_s:
+            value = self.to_v + (value - self.to_v) * math.exp(-(since_s - slewed_s) / self.lag_s)
         return value
 
 
@@ -58,16 +58,7 @@ class Channel:
         self.bias = bias
         self.protection_max_v = 1.1 * max(abs(settings.low_v), abs(settings.high_v))
         self._preset()
-        first = Ramp(
-            start_s=now_s,
-            from_v=0.0,
-            to_v=0.0,
-            electrode_from_v=0.0,
-            slew_v_per_s=settings.slew_v_per_s,
-            lag_s=settings.lag_s,
-            on=False,
-        )
-        self._ramps = Timeline(now_s, first)
+        self._ramps = Timeline(now_s, Ramp(start_s=now_s, slew_v_per_s=settings.slew_v_per_s, lag_s=settings.lag_s))
 
     def _preset(self) -> None:
         self.programmed_v = max(0.0, self.settings.low_v)
@@ -116,13 +107,12 @@ class Channel:
 
     def _change(self, now_s: float) -> None:
         before = self._ramps.latest
-        law = Ramp(
+        law = replace(
+            before,
             start_s=now_s,
             from_v=before.terminal_v(now_s),
             to_v=self.programmed_v if self.on else 0.0,
             electrode_from_v=before.electrode_v(now_s),
-            slew_v_per_s=self.settings.slew_v_per_s,
-            lag_s=self.settings.lag_s,
             on=self.on,
         )
         self._ramps.change(now_s, law)

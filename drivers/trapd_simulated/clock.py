@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 from bisect import bisect_right
 from collections import deque
+from operator import itemgetter
 from typing import Generic, Protocol, TypeVar
 
 KEPT = 4096  # changes a timeline remembers; older ones are forgotten so that a rack may run for months
@@ -59,23 +60,19 @@ class Timeline(Generic[T]):
     """What held from when: the law of motion in force at any rack time, not only now."""
 
     def __init__(self, start_s: float, first: T) -> None:
-        self._starts: deque[float] = deque([start_s], maxlen=KEPT)
-        self._laws: deque[T] = deque([first], maxlen=KEPT)
+        self._laws: deque[tuple[float, T]] = deque([(start_s, first)], maxlen=KEPT)
 
     def change(self, time_s: float, law: T) -> None:
         """From ``time_s`` on, ``law`` holds. Times never run backwards."""
-        self._starts.append(max(time_s, self._starts[-1]))
-        self._laws.append(law)
+        self._laws.append((max(time_s, self._laws[-1][0]), law))
 
     @property
     def latest(self) -> T:
-        return self._laws[-1]
+        return self._laws[-1][1]
 
     def at(self, time_s: float) -> T:
         """The law in force at ``time_s``; `ValueError` for a time before all that is remembered."""
-        if time_s >= self._starts[-1]:
-            return self._laws[-1]
-        index = bisect_right(self._starts, time_s)
+        index = bisect_right(self._laws, time_s, key=itemgetter(0))
         if index == 0:
-            raise ValueError(f"t = {time_s} s is before {self._starts[0]} s, the earliest rack time remembered")
-        return self._laws[index - 1]
+            raise ValueError(f"t = {time_s} s is before {self._laws[0][0]} s, the earliest rack time remembered")
+        return self._laws[index - 1][1]

@@ -22,10 +22,7 @@ from trapd_simulated.server import HOST
 
 
 def _describe(rack: Rack) -> dict[str, Any]:
-    """Ports and kinds of the instruments, seed, speed and the rack's present time."""
-    ports, kinds = rack.ports, rack.kinds
-    instruments = {name: {"port": ports[name], "kind": kinds[name]} for name in ports}
-    return {"instruments": instruments, "seed": rack.seed, "speed": rack.speed, "time_s": rack.clock.now_s()}
+    return {**rack.describe(), "seed": rack.seed, "time_s": rack.clock.now_s()}
 
 
 def _received(rack: Rack, after: int = 0) -> list[dict[str, Any]]:

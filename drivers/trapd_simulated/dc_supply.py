@@ -6,7 +6,7 @@ from collections.abc import Callable
 from typing import ClassVar, TypeAlias
 
 from trapd_simulated.arguments import Arguments, scales
-from trapd_simulated.channel import Channel
+from trapd_simulated.channel import Channel, Ramp
 from trapd_simulated.clock import Clock
 from trapd_simulated.dialect import number_reply, quantise, state_reply
 from trapd_simulated.errors import RackUseError, ScpiError
@@ -56,6 +56,12 @@ class DcSupply(Instrument):
         for channel in self.channels.values():
             channel.advance(now_s)
 
+    def ramps(self, time_s: float) -> dict[int, Ramp]:
+        """The law of each channel in force at rack time ``time_s``."""
+        with self.lock:
+            self.advance(self.clock.now_s())
+            return {number: channel.ramp(time_s) for number, channel in self.channels.items()}
+
     def reset(self, now_s: float) -> None:
         self._selected = 1
         for channel in self.channels.values():
@@ -79,17 +85,18 @@ class DcSupply(Instrument):
         if self.dialect.addressing == "list":
             numbers = self._listed(call)
         call.arguments.done()
-        for number in numbers:
-            if number not in self.channels:
-                raise ScpiError(-114, f"channel {number}")
+        self._require(numbers, -114)
         return [self.channels[number] for number in numbers]
 
     def _listed(self, call: Call) -> tuple[int, ...]:
         numbers = call.arguments.channels()
+        self._require(numbers, -222)
+        return numbers
+
+    def _require(self, numbers: tuple[int, ...], code: int) -> None:
         for number in numbers:
             if number not in self.channels:
-                raise ScpiError(-222, f"channel {number}")
-        return numbers
+                raise ScpiError(code, f"channel {number}")
 
     def _values(self, call: Call, bounds: _Bounds) -> list[tuple[Channel, float]]:
         """The first argument as each addressed channel understands it, so that none is changed when one refuses."""
@@ -141,10 +148,7 @@ class DcSupply(Instrument):
 
     def _measure(self, call: Call) -> str:
         """With suffixes too the channels are a list here: MEASure takes no numeric suffix for them."""
-        if self.dialect.addressing == "select":
-            numbers: tuple[int, ...] = (self._selected,)
-        else:
-            numbers = self._listed(call)
+        numbers = (self._selected,) if self.dialect.addressing == "select" else self._listed(call)
         call.arguments.done()
         return number_reply(self.dialect, "MEAS:VOLT", "V", *(self._measured_v(one, call.now_s) for one in numbers))
 

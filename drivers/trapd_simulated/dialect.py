@@ -6,6 +6,7 @@ import math
 
 from trapd_simulated.settings import Dialect
 
+_PER_PEAK_VOLT = {"VPK": 1.0, "VPP": 2.0, "VRMS": math.sqrt(0.5)}
 _LOAD_OHM = 50.0
 _HERTZ = {"HZ": 1.0, "KHZ": 1e3, "MHZ": 1e6}
 _DISPLAY = {"HZ": "Hz", "KHZ": "kHz", "MHZ": "MHz", "VPK": "V", "VPP": "Vpp", "VRMS": "Vrms", "DBM": "dBm", "V": "V"}
@@ -13,30 +14,17 @@ _DISPLAY = {"HZ": "Hz", "KHZ": "kHz", "MHZ": "MHz", "VPK": "V", "VPP": "Vpp", "V
 
 def level_to_volts(dialect: Dialect, displayed: float) -> float:
     """Real volts zero to peak at the terminals for a level as the instrument displays it."""
-    match dialect.amplitude_unit:
-        case "VPP":
-            volts = displayed / 2.0
-        case "VRMS":
-            volts = displayed * math.sqrt(2.0)
-        case "DBM":
-            volts = math.sqrt(2.0 * _LOAD_OHM * 1e-3 * 10.0 ** (displayed / 10.0))  # P = V_peak^2 / (2 R)
-        case _:
-            volts = displayed
-    return volts * dialect.level_factor
+    if dialect.amplitude_unit == "DBM":
+        return dialect.level_factor * math.sqrt(2.0 * _LOAD_OHM * 1e-3 * 10.0 ** (displayed / 10.0))  # P = V^2 / (2 R)
+    return dialect.level_factor * displayed / _PER_PEAK_VOLT[dialect.amplitude_unit]
 
 
 def volts_to_level(dialect: Dialect, volts: float) -> float:
     """The inverse of `level_to_volts`; ``volts`` above 0 with DBM."""
     volts /= dialect.level_factor
-    match dialect.amplitude_unit:
-        case "VPP":
-            return volts * 2.0
-        case "VRMS":
-            return volts / math.sqrt(2.0)
-        case "DBM":
-            return 10.0 * math.log10(volts**2 / (2.0 * _LOAD_OHM) / 1e-3)
-        case _:
-            return volts
+    if dialect.amplitude_unit == "DBM":
+        return 10.0 * math.log10(volts**2 / (2.0 * _LOAD_OHM) / 1e-3)
+    return volts * _PER_PEAK_VOLT[dialect.amplitude_unit]
 
 
 def quantise(value: float, resolution: float) -> float:

@@ -16,10 +16,9 @@ from trapd_simulated.arguments import Arguments
 from trapd_simulated.clock import Clock
 from trapd_simulated.errors import RackUseError, ScpiError, SettingsError
 from trapd_simulated.faults import Fault, FaultKind, Faults
-from trapd_simulated.headers import HeaderPath, HeaderTree
 from trapd_simulated.settings import InstrumentSettings
 from trapd_simulated.status import Event, Status
-from trapd_simulated.syntax import Unit, units
+from trapd_simulated.syntax import HeaderTree, Unit, units
 
 MANUFACTURER = "TRAPD SIMULATED RACK"
 SCPI_VERSION = "1999.0"
@@ -157,14 +156,18 @@ class Instrument(ABC):
     def _run_message(self, message: str, now_s: float, report: Callable[[ScpiError], None]) -> str | None:
         """An execution error skips its unit, any other ends the message; what came before stands (488.2 6.1.7)."""
         replies: list[str] = []
-        path = HeaderPath()
+        path: tuple[str, ...] = ()
         identified = False
         try:
             for unit in units(message):
                 if identified and unit.query:
                     raise ScpiError(-440)
+                # SCPI-1999 volume 1, 6.2.4: without a leading colon a header continues where the one before, as it was
+                # written, had its last node; common commands leave that path alone.
+                header = unit.nodes if unit.from_root or unit.common else path + unit.nodes
+                path = path if unit.common else header[:-1]
                 try:
-                    reply = self._run_unit(unit, path, now_s, bool(replies))
+                    reply = self._run_unit(unit, header, now_s, bool(replies))
                 except ScpiError as error:
                     if not -299 <= error.code <= -200:
                         raise
@@ -177,23 +180,19 @@ class Instrument(ABC):
             report(error)
         return ";".join(replies) if replies else None
 
-    def _run_unit(self, unit: Unit, path: HeaderPath, now_s: float, message_available: bool) -> str | None:
-        found = self._tree.find(path.full(unit))
-        command, query = self._commands[found.command]
-        call = Call(
-            suffix=found.suffix, arguments=Arguments(unit.parameters), now_s=now_s, message_available=message_available
-        )
-        if unit.query:
-            if query is None:
-                raise ScpiError(-113, ":".join(unit.nodes) + "?")
+    def _run_unit(self, unit: Unit, header: tuple[str, ...], now_s: float, message_available: bool) -> str | None:
+        name, suffix = self._tree.find(header)
+        command, query = self._commands[name]
+        arguments = Arguments(unit.parameters)
+        call = Call(suffix=suffix, arguments=arguments, now_s=now_s, message_available=message_available)
+        if unit.query and query:
             reply = query(call)
-            call.arguments.done()
+            arguments.done()
             return reply
-        if command is None:
-            raise ScpiError(-113, ":".join(unit.nodes))
-        if not unit.common and self._spoiled():
-            return None
-        command(call)
+        if unit.query or not command:
+            raise ScpiError(-113, ":".join(unit.nodes) + ("?" if unit.query else ""))
+        if unit.common or not self._spoiled():
+            command(call)
         return None
 
     def _spoiled(self) -> bool:
@@ -211,12 +210,13 @@ class Instrument(ABC):
         """IEEE 488.2 10 and SCPI-1999 volume 1, 4.1. No command here overlaps, so *OPC? says nothing about settling."""
         return {
             "*CLS": (_alone(lambda call: self._status.clear()), None),
-            "*ESE": (self._set_event_enable, lambda call: str(self._status.event_enable)),
+            "*ESE": (self._set_enable("event_enable", 255), lambda call: str(self._status.event_enable)),
             "*ESR": (None, _alone(lambda call: str(self._status.take_events()))),
             "*IDN": (None, _alone(lambda call: self._identity())),
             "*OPC": (_alone(lambda call: self._status.report(Event.OPERATION_COMPLETE)), lambda call: "1"),
             "*RST": (_alone(lambda call: self.reset(call.now_s)), None),
-            "*SRE": (self._set_service_enable, lambda call: str(self._status.service_enable)),
+            # 488.2 11.3.2: bit 6 of the service request enable is ignored.
+            "*SRE": (self._set_enable("service_enable", 255 - 64), lambda call: str(self._status.service_enable)),
             "*STB": (None, lambda call: str(self._status.byte(call.message_available))),
             "*TST": (None, lambda call: "0"),
             "*WAI": (_alone(lambda call: None), None),
@@ -225,15 +225,13 @@ class Instrument(ABC):
             "version": (None, lambda call: SCPI_VERSION),
         }
 
-    def _set_event_enable(self, call: Call) -> None:
-        mask = call.arguments.integer(0, 255)
-        call.arguments.done()
-        self._status.event_enable = mask
+    def _set_enable(self, register: str, bits: int) -> Set:
+        def run(call: Call) -> None:
+            mask = call.arguments.integer(0, 255)
+            call.arguments.done()
+            setattr(self._status, register, mask & bits)
 
-    def _set_service_enable(self, call: Call) -> None:
-        mask = call.arguments.integer(0, 255)
-        call.arguments.done()
-        self._status.service_enable = mask
+        return run
 
     def _next_error(self) -> str:
         code, text = self._status.next_error()

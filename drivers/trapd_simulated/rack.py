@@ -6,7 +6,7 @@ import time
 from collections.abc import Callable
 from pathlib import Path
 from types import TracebackType
-from typing import Self
+from typing import Any, Self
 
 from trapd_simulated.bench import Bench, Electrodes
 from trapd_simulated.clock import Clock, RackClock
@@ -17,7 +17,7 @@ from trapd_simulated.instrument import Instrument
 from trapd_simulated.receipts import Receipts, Received
 from trapd_simulated.rf_source import RfSource
 from trapd_simulated.server import InstrumentServer
-from trapd_simulated.settings import InstrumentSettings, RackSettings, RfSourceSettings
+from trapd_simulated.settings import DcSupplySettings, InstrumentSettings, RackSettings, RfSourceSettings
 
 
 class Rack:
@@ -78,9 +78,11 @@ class Rack:
     def ports(self) -> dict[str, int]:
         return {name: server.port for name, server in self._servers.items()}
 
-    @property
-    def kinds(self) -> dict[str, str]:
-        return {name: _kind(one.settings) for name, one in self._instruments.items()}
+    def describe(self) -> dict[str, Any]:
+        """Port and kind of each instrument, and the rack's speed."""
+        kinds = {name: one.settings.KIND for name, one in self._instruments.items()}
+        instruments = {name: {"port": port, "kind": kinds[name]} for name, port in self.ports.items()}
+        return {"instruments": instruments, "speed": self.speed}
 
     @property
     def received(self) -> list[Received]:
@@ -142,8 +144,5 @@ class Rack:
 def _instrument(name: str, settings: InstrumentSettings, clock: Clock, seed: int) -> Instrument:
     if isinstance(settings, RfSourceSettings):
         return RfSource(name, settings, clock, seed)
+    assert isinstance(settings, DcSupplySettings)
     return DcSupply(name, settings, clock, seed)
-
-
-def _kind(settings: InstrumentSettings) -> str:
-    return "rf-source" if isinstance(settings, RfSourceSettings) else "dc-supply"

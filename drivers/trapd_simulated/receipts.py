@@ -40,13 +40,8 @@ class Receipts:
 
     def add(self, instrument: str, text: str) -> None:
         with self._lock:
-            record = Received(
-                index=self._next,
-                instrument=instrument,
-                monotonic_ns=time.monotonic_ns(),
-                wall_us=time.time_ns() // 1000,
-                text=text,
-            )
+            now = {"monotonic_ns": time.monotonic_ns(), "wall_us": time.time_ns() // 1000}
+            record = Received(index=self._next, instrument=instrument, text=text, **now)
             self._next += 1
             self._kept.append(record)
             if self._log:

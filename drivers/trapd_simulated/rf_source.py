@@ -30,10 +30,10 @@ class Carrier:
 
     start_s: float
     frequency_hz: float
-    from_v: float
-    to_v: float  # zero to peak; 0 with the output off
+    from_v: float = 0.0
+    to_v: float = 0.0  # zero to peak; 0 with the output off
     settle_s: float
-    on: bool
+    on: bool = False
 
     def level_v(self, time_s: float) -> float:
         """Volts zero to peak at the terminals."""
@@ -68,14 +68,7 @@ class RfSource(Instrument):
         self._level_high = greatest(volts_to_level(self.dialect, settings.level_max_v), resolution)
         self._preset()
         now_s = clock.now_s()
-        first = Carrier(
-            start_s=now_s,
-            frequency_hz=self._frequency_hz,
-            from_v=0.0,
-            to_v=0.0,
-            settle_s=settings.settle_s,
-            on=False,
-        )
+        first = Carrier(start_s=now_s, frequency_hz=self._frequency_hz, settle_s=settings.settle_s)
         self._carriers = Timeline(now_s, first)
 
     def _preset(self) -> None:
@@ -85,19 +78,19 @@ class RfSource(Instrument):
         self._tripped = False
 
     def commands(self) -> dict[str, tuple[Set | None, Query | None]]:
-        measure = (None, self._measure if self.dialect.measures else None)
         return {
             "frequency": (self._set_frequency, self._read_frequency),
             "level": (self._set_level, self._read_level),
             "output": (self._set_output, lambda call: state_reply(self.dialect, "OUTP", self._on)),
             "tripped": (None, lambda call: state_reply(self.dialect, "VOLT:PROT:TRIP", self._tripped)),
             "clear": (self._clear, None),
-            "measure": measure,
+            "measure": (None, self._measure if self.dialect.measures else None),
         }
 
     def carrier(self, time_s: float) -> Carrier:
-        """The law in force at rack time ``time_s``. Hold ``lock``."""
-        return self._carriers.at(time_s)
+        """The law in force at rack time ``time_s``."""
+        with self.lock:
+            return self._carriers.at(time_s)
 
     def advance(self, now_s: float) -> None:
         """Nothing happens to a synthesizer by itself."""
@@ -131,22 +124,19 @@ class RfSource(Instrument):
     def _set_frequency(self, call: Call) -> None:
         low, high = self.settings.frequency_min_hz, self.settings.frequency_max_hz
         value = call.arguments.quantity(scales("HZ"), low, high, self.dialect.frequency_default_unit)
-        call.arguments.done()
-        self._suffix_one(call)
+        self._end(call)
         self._frequency_hz = quantise(value, self.settings.frequency_resolution_hz)
         self._change(call.now_s)
 
     def _read_frequency(self, call: Call) -> str:
-        self._suffix_one(call)
         extreme = call.arguments.extreme(self.settings.frequency_min_hz, self.settings.frequency_max_hz)
+        self._end(call)
         return frequency_reply(self.dialect, "FREQ", self._frequency_hz if extreme is None else extreme)
 
     def _set_level(self, call: Call) -> None:
-        value = call.arguments.quantity(
-            self._level_units, self._level_low, self._level_high, self.dialect.amplitude_unit
-        )
-        call.arguments.done()
-        self._suffix_one(call)
+        low, high = self._level_low, self._level_high
+        value = call.arguments.quantity(self._level_units, low, high, self.dialect.amplitude_unit)
+        self._end(call)
         before, self._level = self._level, quantise(value, self.settings.level_resolution)
         self._change(call.now_s, self.settings.range_dropout_s if self._crosses(before, self._level) else 0.0)
 
@@ -155,23 +145,21 @@ class RfSource(Instrument):
         return any((old_v < boundary) != (new_v < boundary) for boundary in self.settings.range_boundaries_v)
 
     def _read_level(self, call: Call) -> str:
-        self._suffix_one(call)
         extreme = call.arguments.extreme(self._level_low, self._level_high)
+        self._end(call)
         value = self._level if extreme is None else extreme
         return number_reply(self.dialect, "VOLT", self.dialect.amplitude_unit, value)
 
     def _set_output(self, call: Call) -> None:
         on = call.arguments.boolean()
-        call.arguments.done()
-        self._suffix_one(call)
+        self._end(call)
         if on and self._tripped:
             raise ScpiError(-221, "protection has tripped; clear it first")
         self._on = on
         self._change(call.now_s)
 
     def _clear(self, call: Call) -> None:
-        call.arguments.done()
-        self._suffix_one(call)
+        self._end(call)
         self._tripped = False
 
     def _measure(self, call: Call) -> str:
@@ -180,6 +168,7 @@ class RfSource(Instrument):
         return number_reply(self.dialect, "MEAS:VOLT:AC", "V", abs(self.readback(rms_v, accuracy_v, self._bias)))
 
     @staticmethod
-    def _suffix_one(call: Call) -> None:
+    def _end(call: Call) -> None:
+        call.arguments.done()
         if call.suffix != 1:
             raise ScpiError(-114, "one output")

@@ -1,12 +1,18 @@
-"""What stands in the rack: frozen records, and their defaults, which suit a linear trap driven at 21 MHz."""
+"""What stands in the rack: frozen records, their defaults, which suit a linear trap driven at 21 MHz, and their file."""
 
 from __future__ import annotations
 
+import json
+import tomllib
 from collections.abc import Mapping
-from dataclasses import dataclass, field
-from typing import Literal, TypeAlias
+from dataclasses import dataclass, field, fields, is_dataclass
+from pathlib import Path
+from types import UnionType
+from typing import Any, ClassVar, Literal, TypeVar, Union, get_args, get_origin, get_type_hints
 
 from trapd_simulated.errors import SettingsError
+
+T = TypeVar("T")
 
 
 def _ascending(names: str, low: float, high: float) -> None:
@@ -37,14 +43,25 @@ class Dialect:
 
 
 @dataclass(frozen=True, kw_only=True)
-class RfSourceSettings:
-    """A synthesizer. Volts are real, zero to peak, at its terminals, except ``level_resolution``."""
+class InstrumentSettings:
+    """What every instrument has."""
 
-    model: str = "RF SOURCE"
-    serial: str = "SIM-RF"
+    KIND: ClassVar[str]
+    model: str
+    serial: str
     version: str = "1.0"
     port: int = 0  # 0: any free one
     max_clients: int = 8
+    dialect: Dialect = field(default_factory=Dialect)
+
+
+@dataclass(frozen=True, kw_only=True)
+class RfSourceSettings(InstrumentSettings):
+    """A synthesizer. Volts are real, zero to peak, at its terminals, except ``level_resolution``."""
+
+    KIND: ClassVar = "rf-source"
+    model: str = "RF SOURCE"
+    serial: str = "SIM-RF"
     frequency_min_hz: float = 1e6
     frequency_max_hz: float = 60e6
     frequency_resolution_hz: float = 1.0
@@ -56,7 +73,6 @@ class RfSourceSettings:
     range_dropout_s: float = 5e-3
     accuracy_absolute_v: float = 2e-3  # of MEASure:AC?, in volts rms
     accuracy_relative: float = 2e-3
-    dialect: Dialect = field(default_factory=Dialect)
 
     def __post_init__(self) -> None:
         _ascending("frequency_min_hz, frequency_max_hz", self.frequency_min_hz, self.frequency_max_hz)
@@ -86,21 +102,18 @@ class ChannelSettings:
 
 
 @dataclass(frozen=True, kw_only=True)
-class DcSupplySettings:
+class DcSupplySettings(InstrumentSettings):
     """A DC supply; channel n is the n-th entry, from 1."""
 
+    KIND: ClassVar = "dc-supply"
     model: str = "DC SUPPLY"
     serial: str = "SIM-DC"
-    version: str = "1.0"
-    port: int = 0
-    max_clients: int = 8
     channels: tuple[ChannelSettings, ...] = (
         ChannelSettings(low_v=0.0, high_v=1000.0, resolution_v=1e-2, accuracy_absolute_v=3e-2),
         ChannelSettings(),
         ChannelSettings(),
         ChannelSettings(),
     )
-    dialect: Dialect = field(default_factory=Dialect)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -114,9 +127,6 @@ class ResonatorSettings:
     warmup_shift_hz: float = -800.0  # of the center, in the end, at the reference amplitude
     warmup_reference_v: float = 300.0  # electrode amplitude; dissipated power goes with its square
     warmup_time_s: float = 300.0
-
-
-InstrumentSettings: TypeAlias = RfSourceSettings | DcSupplySettings
 
 
 def default_instruments() -> dict[str, InstrumentSettings]:
@@ -146,3 +156,89 @@ class RackSettings:
                 f"resonator.instrument = {self.resonator.instrument!r}: expected the name of an RF source, one of "
                 f"{[name for name, one in self.instruments.items() if isinstance(one, RfSourceSettings)]}"
             )
+
+
+KINDS: Mapping[str, type[InstrumentSettings]] = {one.KIND: one for one in (RfSourceSettings, DcSupplySettings)}
+
+
+def load(path: Path) -> RackSettings:
+    """The settings of a TOML or JSON file (by its suffix). Every mistake is one `SettingsError`."""
+    try:
+        text = path.read_text(encoding="utf-8")
+        data = json.loads(text) if path.suffix == ".json" else tomllib.loads(text)
+    except OSError as error:
+        raise SettingsError(f"{path}: cannot be read ({error.strerror}); no rack was started") from error
+    except ValueError as error:  # both decoders and UTF-8
+        raise SettingsError(f"{path}: {error}; no rack was started") from error
+    try:
+        return _rack(data)
+    except SettingsError as error:
+        raise SettingsError(f"{path}: {error}; no rack was started") from None
+
+
+def _rack(data: object) -> RackSettings:
+    table = dict(_table(data, "the file"))
+    if "instruments" in table:
+        table["instruments"] = {
+            name: _instrument(_table(one, f"instruments.{name}"), f"instruments.{name}")
+            for name, one in _table(table["instruments"], "instruments").items()
+        }
+    return _build(RackSettings, table, "")
+
+
+def _instrument(table: Mapping[str, Any], where: str) -> InstrumentSettings:
+    kind = table.get("kind")
+    if not isinstance(kind, str) or kind not in KINDS:
+        raise SettingsError(f"{where}.kind = {kind!r}: expected one of {', '.join(KINDS)}")
+    return _build(KINDS[kind], {key: value for key, value in table.items() if key != "kind"}, where)
+
+
+def _build(record: type[T], table: Mapping[str, Any], where: str) -> T:
+    hints = get_type_hints(record)
+    known = {one.name for one in fields(record)}  # type: ignore[arg-type]
+    for key in table:
+        if key not in known:
+            raise SettingsError(f"{_join(where, key)}: unknown; expected one of {', '.join(sorted(known))}")
+    values = {key: _value(hints[key], value, _join(where, key)) for key, value in table.items()}
+    try:
+        return record(**values)
+    except SettingsError as error:
+        raise SettingsError(f"{where}: {error}" if where else str(error)) from None
+
+
+def _value(hint: Any, value: Any, where: str) -> Any:
+    """``value`` as the type ``hint`` asks for."""
+    origin, inner = get_origin(hint), get_args(hint)
+    if is_dataclass(hint) and isinstance(hint, type):
+        return value if isinstance(value, hint) else _build(hint, _table(value, where), where)
+    if origin is Literal and value in inner:
+        return value
+    if origin is tuple and isinstance(value, list):
+        return tuple(_value(inner[0], one, f"{where}[{index}]") for index, one in enumerate(value))
+    if origin is Mapping:
+        return {_key(inner[0], key, where): _value(inner[1], one, where) for key, one in _table(value, where).items()}
+    if origin in (Union, UnionType) and any(isinstance(value, option) for option in inner):
+        return value
+    if hint is float and isinstance(value, int | float) and not isinstance(value, bool):
+        return float(value)
+    if isinstance(hint, type) and origin is None and type(value) is hint:
+        return value
+    expected = ", ".join(map(repr, inner)) if origin is Literal else getattr(hint, "__name__", str(hint))
+    raise SettingsError(f"{where} = {value!r}: expected {expected}")
+
+
+def _key(hint: Any, key: str, where: str) -> Any:
+    try:
+        return hint(key)
+    except ValueError:
+        raise SettingsError(f"{where}: key {key!r}: expected {hint.__name__}") from None
+
+
+def _table(value: Any, where: str) -> Mapping[str, Any]:
+    if not isinstance(value, Mapping):
+        raise SettingsError(f"{where} = {value!r}: expected a table")
+    return value
+
+
+def _join(where: str, key: str) -> str:
+    return f"{where}.{key}" if where else key

@@ -20,15 +20,6 @@ class Event(IntFlag):
     POWER_ON = 128
 
 
-class Summary(IntFlag):
-    """Status byte, 488.2 11.2; bit 2 is SCPI's (SCPI-1999 volume 1, 9)."""
-
-    ERROR_QUEUE = 4
-    MESSAGE_AVAILABLE = 16
-    EVENT = 32
-    MASTER = 64
-
-
 def event_of(code: int) -> Event:
     """The event bit an error sets (SCPI-1999 21.8.2): its hundreds; positive codes are the device's own."""
     if -199 <= code <= -100:
@@ -50,7 +41,7 @@ class Status:
         self._errors: deque[tuple[int, str]] = deque()
         self._events = Event.POWER_ON
         self.event_enable = 0
-        self._service_enable = 0
+        self.service_enable = 0
 
     def report(self, event: Event) -> None:
         self._events |= event
@@ -83,23 +74,11 @@ class Status:
         self._events = Event(0)
         self._errors.clear()
 
-    @property
-    def service_enable(self) -> int:
-        return self._service_enable
-
-    @service_enable.setter
-    def service_enable(self, mask: int) -> None:
-        self._service_enable = mask & ~int(Summary.MASTER)  # 488.2 11.3.2: bit 6 is ignored
-
     def byte(self, message_available: bool) -> int:
-        """*STB?: bit 6 is the master summary (488.2 11.2.2.2). Reading changes nothing."""
-        byte = Summary(0)
-        if self._errors:
-            byte |= Summary.ERROR_QUEUE
-        if message_available:
-            byte |= Summary.MESSAGE_AVAILABLE
-        if self._events & self.event_enable:
-            byte |= Summary.EVENT
-        if byte & self._service_enable:
-            byte |= Summary.MASTER
-        return int(byte)
+        """*STB?, 488.2 11.2: bit 2 (SCPI's) error queue, 4 message available, 5 event, 6 master summary of the others.
+
+        Reading changes nothing.
+        """
+        event = bool(self._events & self.event_enable)
+        byte = 4 * bool(self._errors) + 16 * message_available + 32 * event
+        return byte + 64 * bool(byte & self.service_enable)

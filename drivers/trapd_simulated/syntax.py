@@ -1,20 +1,22 @@
 """Program messages to program message units: the notation of IEEE 488.2 clause 7 and SCPI-1999 volume 1 clauses 6 to 8.
 
-Only notation: which headers exist is `headers`, what a parameter may be is `arguments`.
+Only notation: which headers exist is the instrument's `HeaderTree`, what a parameter may be is `arguments`.
 """
 
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from typing import TypeAlias
+from enum import Enum
+from itertools import product
 
 from trapd_simulated.errors import ScpiError
 
 # IEEE 488.2 7.4.1.2: white space is every ASCII control character and the blank, but not the newline.
 WHITE = "".join(chr(code) for code in range(33) if code != 10)
 _MNEMONIC_LIMIT = 12  # 488.2 7.6.1.4.1
+_LONGEST_RANGE = 1000
 _HEADER = re.compile(r"(\*[A-Za-z]\w*|:?[A-Za-z]\w*(?::[A-Za-z]\w*)*)(\?)?", re.ASCII)
 _NUMBER = re.compile(
     r"(?P<mantissa>[+-]?(?:\d+(?:\.\d*)?|\.\d+))"
@@ -24,38 +26,28 @@ _NUMBER = re.compile(
 )
 _WORD = re.compile(r"[A-Za-z]\w*", re.ASCII)
 _CHANNEL = re.compile(r"(\d+)(?:\s*:\s*(\d+))?", re.ASCII)
+_NODE = re.compile(r"(?P<open>\[)?:?(?P<name>[A-Za-z]+)(?P<suffix>#)?\]?")
+_SUFFIX = re.compile(r"([A-Z_]+)(\d*)", re.ASCII)
+
+
+class Kind(Enum):
+    NUMBER = "decimal numeric"
+    WORD = "character"
+    STRING = "string"  # no command of this rack takes any, but it must be recognised to be refused
+    CHANNELS = "channel list"
 
 
 @dataclass(frozen=True, kw_only=True)
-class Number:
-    """Decimal numeric program data; ``suffix`` in upper case, empty when there was none."""
+class Parameter:
+    """``text`` is a word, or the suffix of a number (empty when there was none), in upper case.
 
-    value: float
-    suffix: str = ""
+    ``channels`` is ``(@1,2:4)`` written out: (1, 2, 3, 4).
+    """
 
-
-@dataclass(frozen=True, kw_only=True)
-class Word:
-    """Character program data, in upper case."""
-
-    text: str
-
-
-@dataclass(frozen=True, kw_only=True)
-class ChannelList:
-    """``(@1,2:4)`` written out: (1, 2, 3, 4)."""
-
-    channels: tuple[int, ...]
-
-
-@dataclass(frozen=True, kw_only=True)
-class Quoted:
-    """String program data; no command of this rack takes any, but it must be recognised to be refused."""
-
-    text: str
-
-
-Parameter: TypeAlias = Number | Word | ChannelList | Quoted
+    kind: Kind
+    text: str = ""
+    value: float = 0.0
+    channels: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -141,21 +133,21 @@ def _parameter(text: str) -> Parameter:
     if first in "\"'":
         if len(text) < 2 or text[-1] != first:
             raise ScpiError(-151, text[:20])
-        return Quoted(text=text[1:-1])
+        return Parameter(kind=Kind.STRING, text=text[1:-1])
     if first == "#":
         raise ScpiError(-168, text[:20])
     return _word(text)
 
 
-def _word(text: str) -> Word:
+def _word(text: str) -> Parameter:
     if not _WORD.fullmatch(text):
         raise ScpiError(-103 if any(char in WHITE for char in text) else -141, text[:20])
     if len(text) > _MNEMONIC_LIMIT:
         raise ScpiError(-144, text[:20])
-    return Word(text=text.upper())
+    return Parameter(kind=Kind.WORD, text=text.upper())
 
 
-def _number(text: str) -> Number:
+def _number(text: str) -> Parameter:
     match = _NUMBER.fullmatch(text)
     if not match:
         raise ScpiError(-121, text[:20])
@@ -166,21 +158,77 @@ def _number(text: str) -> Number:
         raise ScpiError(-123, exponent[:20])
     if len(suffix) > _MNEMONIC_LIMIT:  # 488.2 7.7.3.4
         raise ScpiError(-134, suffix[:20])
-    return Number(value=float(f"{mantissa}e{exponent}"), suffix=suffix.upper())
+    return Parameter(kind=Kind.NUMBER, value=float(f"{mantissa}e{exponent}"), text=suffix.upper())
 
 
-def _channel_list(text: str) -> ChannelList:
+def _channel_list(text: str) -> Parameter:
     """SCPI-1999 volume 1, 8.3.2: entries are channels or ranges, kept in the order written."""
     if not (text.startswith("(@") and text.endswith(")")):
         raise ScpiError(-171, text[:20])
     channels: list[int] = []
     for entry in text[2:-1].split(","):
         match = _CHANNEL.fullmatch(entry.strip(WHITE))
-        if not match:
+        if not match or abs(int(match[1]) - int(match[2] or match[1])) > _LONGEST_RANGE:
             raise ScpiError(-171, text[:20])
         first, last = int(match[1]), int(match[2] or match[1])
-        if abs(last - first) > 1000:
-            raise ScpiError(-171, text[:20])
         step = 1 if last >= first else -1
         channels.extend(range(first, last + step, step))
-    return ChannelList(channels=tuple(channels))
+    return Parameter(kind=Kind.CHANNELS, channels=tuple(channels))
+
+
+class HeaderTree:
+    """All spellings of all headers of one instrument, each looked up in one step.
+
+    A pattern is written as in SCPI-1999 volume 1, 6.2: capitals are the short form, brackets an optional node, and
+    ``#`` a node that takes a numeric suffix: ``[SOURce#]:VOLTage[:LEVel]``.
+    """
+
+    def __init__(self, patterns: Mapping[str, tuple[str, ...]]) -> None:
+        self._spellings: dict[tuple[str, ...], tuple[str, int]] = {}
+        for command, alternatives in patterns.items():
+            for pattern in alternatives:
+                for spelling, suffixed in _spellings(pattern):
+                    self._spellings[spelling] = (command, suffixed)
+
+    def find(self, nodes: tuple[str, ...]) -> tuple[str, int]:
+        """Our own name for the command, and its numeric suffix, 1 when omitted (SCPI-1999 6.2.5.2).
+
+        Raises `ScpiError` -113 for an unknown header, -114 for a suffix on a node that has only one.
+        """
+        names, numbers = zip(*(_name_and_suffix(node) for node in nodes), strict=True)
+        entry = self._spellings.get(names)
+        if entry is None:
+            raise ScpiError(-113, ":".join(nodes))
+        command, suffixed = entry
+        for index, number in enumerate(numbers):
+            if index != suffixed and number != 1:
+                raise ScpiError(-114, ":".join(nodes))
+        return command, numbers[suffixed] if suffixed >= 0 else 1
+
+
+def _name_and_suffix(node: str) -> tuple[str, int]:
+    if node.startswith("*"):
+        return node, 1
+    match = _SUFFIX.fullmatch(node)
+    if not match:
+        raise ScpiError(-113, node)
+    return match[1], int(match[2] or 1)
+
+
+def _spellings(pattern: str) -> list[tuple[tuple[str, ...], int]]:
+    """Every way to write ``pattern``, with the index of the node that takes the suffix (-1: none)."""
+    if pattern.startswith("*"):
+        return [((pattern.upper(),), -1)]
+    choices: list[list[tuple[str, bool]]] = []
+    for node in _NODE.finditer(pattern):
+        name, suffixed = node["name"], node["suffix"] is not None
+        short = "".join(char for char in name if char.isupper())
+        forms = [(form, suffixed) for form in sorted({short, name.upper()})]
+        choices.append([*forms, ("", False)] if node["open"] else forms)
+    found = []
+    for combination in product(*choices):
+        written = [(name, suffixed) for name, suffixed in combination if name]
+        if written:
+            places = [index for index, (_, suffixed) in enumerate(written) if suffixed]
+            found.append((tuple(name for name, _ in written), places[0] if places else -1))
+    return found

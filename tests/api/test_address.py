@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import os
 import socket
+import stat
+import warnings
 from collections.abc import Iterator
 from contextlib import ExitStack
 from pathlib import Path
@@ -11,7 +14,7 @@ import pytest
 
 from trapd import address
 from trapd.address import find, runtime_socket
-from trapd.errors import ConfigError, DaemonUnreachable
+from trapd.errors import ConfigError, DaemonUnreachable, NotPermitted
 
 
 @pytest.fixture(autouse=True)
@@ -110,3 +113,29 @@ def test_what_is_no_trap_file_is_told(tmp_path: Path, text: str | None) -> None:
         file.write_text(text)
     with pytest.raises(ConfigError, match=r"trap\.toml"):
         find(file)
+
+
+def test_without_a_runtime_directory_of_the_session_nothing_is_said(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.delenv("XDG_RUNTIME_DIR")
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        with pytest.raises(DaemonUnreachable):
+            find()
+
+
+def test_the_daemon_s_directory_is_made_for_its_user_alone(directories: tuple[Path, Path]) -> None:
+    directories[0].rmdir()
+    runtime_socket("x")
+    assert stat.S_IMODE(directories[0].stat().st_mode) == 0o700
+
+
+def test_a_directory_of_somebody_else_is_refused(
+    directories: tuple[Path, Path], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    if os.geteuid() == 0:
+        os.chown(directories[0], 4242, 4242)
+    else:
+        monkeypatch.setattr(os, "geteuid", lambda: 4242)
+    for ask in (find, lambda: runtime_socket("x")):
+        with pytest.raises(NotPermitted, match=r"expected a directory of user .* set XDG_RUNTIME_DIR"):
+            ask()

@@ -15,9 +15,11 @@ from pathlib import Path
 
 import pytest
 
-from tests.running import RunningTrap
+from tests.controller.test_faults import DeadDisk
+from tests.running import RunningTrap, hurried, running_trap
+from tests.traps import NORTH_BENCH
 from trapd import errors
-from trapd.client import Client
+from trapd.client import Client, JsonEntry
 from trapd.client.connection import error_kinds
 from trapd.client.following import wait_result
 from trapd.errors import (
@@ -162,7 +164,7 @@ def test_waiting_tells_progress_and_returns_the_result_of_its_own_request() -> N
         entry(11, "heartbeat"),
     ]
     seen: list[object] = []
-    result = wait_result(iter(entries), 5, lambda one: seen.append(one["seq"]))
+    result = wait_result(iter(entries), 5, lambda one: seen.append(one["seq"]), dict)
     assert result is entries[2]
     assert seen == [8, 9, 10]
 
@@ -171,14 +173,43 @@ def test_waiting_tells_progress_and_returns_the_result_of_its_own_request() -> N
 def test_waiting_raises_what_it_ended_with(kind: type[errors.TrapdError]) -> None:
     ended = entry(10, "result", request=5, state="failed", code=kind.code, error="why it ended")
     with pytest.raises(kind, match="why it ended") as caught:
-        wait_result(iter([ended]), 5, None)
+        wait_result(iter([ended]), 5, None, dict)
     assert caught.type is kind
     assert caught.value.details["entry"] == 10
 
 
 def test_waiting_ends_when_the_daemon_was_started_anew() -> None:
     with pytest.raises(NotConfirmed, match="started anew"):
-        wait_result(iter([entry(10, "start")]), 5, None)
+        wait_result(iter([entry(10, "start")]), 5, None, dict)
+
+
+@pytest.mark.parametrize(
+    ("moving", "unwritten", "ended"), [(None, 2, True), (4, 2, True), (5, 2, False), (None, 0, False)]
+)
+def test_a_silent_stream_is_waited_on_unless_the_end_cannot_be_written(
+    moving: int | None, unwritten: int, ended: bool
+) -> None:
+    status = {"situation": {"moving": moving and {"request": moving}, "unwritten": unwritten}}
+    entries = [None, entry(10, "result", request=5, state="done")]
+    if ended:
+        with pytest.raises(RecordUnwritable, match="its end cannot be written"):
+            wait_result(iter(entries), 5, None, lambda: status)
+    else:
+        assert wait_result(iter(entries), 5, None, lambda: status) is entries[1]
+
+
+def test_a_move_over_which_the_disk_dies_is_not_waited_for_forever(tmp_path: Path) -> None:
+    def kill_disk(one: JsonEntry) -> None:
+        if one["kind"] == "intent":
+            disk.dead = True
+
+    with running_trap(tmp_path, hurried(NORTH_BENCH, faster=10)) as trap:
+        trap.switch_on()
+        desk = trap.daemon.controller._desk
+        desk.record = disk = DeadDisk(desk.record)
+        with pytest.raises(RecordUnwritable, match="the move has ended"):
+            trap.client.set({"endcaps": 800.0}, why="a long way", progress=kill_disk)
+        disk.dead = False
 
 
 def test_the_client_costs_nothing_before_it_is_used() -> None:

@@ -2,16 +2,18 @@
 
 The state is a worked case whose frequencies are known to 16 digits. Its peer is the monodromy of one drive period by
 `solve_ivp` (DOP853, rtol = atol = 1e-13, all six columns at once) and its eigenvalues, which is as close as that
-integrator comes; ours must be at least as close to the known digits. (The peer cannot tell the first region from the
+integrator comes; ours must be at least as close to the known digits. `inside` decides from the map of half a period that also
+gives `motion` its frequencies. (The peer cannot tell the first region from the
 others.) The peer of an interval bisects both ends for both species with that integrator at rtol = atol = 1e-8, from
 brackets it is given, to 1e-9 of the value; ours is good to 1e-12 and finds its own.
 """
 
 from __future__ import annotations
 
-import time
 from collections.abc import Callable
 from dataclasses import replace
+from math import cos
+from timeit import timeit
 from typing import Any
 
 import numpy as np
@@ -50,11 +52,14 @@ def measure() -> list[dict[str, Any]]:
     peers = _integrated(trap, species, point)
     closer = bool(np.abs(ours / truth - 1).max() <= np.abs(peers / truth - 1).max())
     states = [replace(point, amplitude_v=volts) for volts in np.linspace(0.8, 1.2, 100)]
-    test = 1e3 * _seconds(lambda: inside(trap, species, [point]), 200)
-    one = 1e3 * _seconds(lambda: motion(trap, species, point), 200)
-    many = 1e3 * _seconds(lambda: motions(trap, species, states), 20) / len(states)
-    peer = 1e3 * _seconds(lambda: _integrated(trap, species, point), 5)
-    window, bisection = 1e3 * _seconds(_window, 10), 1e3 * _seconds(_bisected, 1)
+    test, one, many, peer = _milliseconds(
+        (lambda: inside(trap, species, [point]), 200),
+        (lambda: motion(trap, species, point), 100),
+        (lambda: motions(trap, species, states), 2),
+        (lambda: _integrated(trap, species, point), 5),
+    )
+    many /= len(states)
+    window, bisection = _milliseconds((_window, 10), (_bisected, 1))
     return [
         _row("stability of one coupled 3D state", test, peer, 30.0, 0.2, closer),
         _row("its whole motion: frequencies, a, q, depth", one, peer, 5.0, 0.5, closer),
@@ -76,15 +81,11 @@ def _row(name: str, value_ms: float, peer_ms: float, times: float, most_ms: floa
     }
 
 
-def _seconds(work: Callable[[], object], times: int) -> float:
-    """The quickest of five rounds, each call's share."""
-    rounds = []
-    for _ in range(5):
-        start = time.perf_counter()
-        for _ in range(times):
-            work()
-        rounds.append((time.perf_counter() - start) / times)
-    return min(rounds)
+def _milliseconds(*works: tuple[Callable[[], object], int]) -> list[float]:
+    """Of one call of each, so many in a round; the median of nine rounds in which they take turns, so that a busy machine
+    slows all of them alike."""
+    rounds = [[1e3 * timeit(work, number=times) / times for work, times in works] for _ in range(9)]
+    return [float(one) for one in np.median(rounds, axis=0)]
 
 
 def _multipliers(trap: Trap, species: Species, point: Point, tolerance: float) -> np.ndarray[Any, Any]:
@@ -92,8 +93,8 @@ def _multipliers(trap: Trap, species: Species, point: Point, tolerance: float) -
     a, q = c.a[0], c.q[0]
 
     def rate(tau: float, flat: np.ndarray[Any, Any]) -> np.ndarray[Any, Any]:
-        y = flat.reshape(6, 6)
-        return np.concatenate([y[3:], -(a + 2 * np.cos(2 * tau) * q) @ y[:3]]).ravel()
+        stiffness = a + (2 * cos(2 * tau)) * q
+        return np.concatenate([flat[18:], -(stiffness @ flat[:18].reshape(3, 6)).ravel()])
 
     solution = solve_ivp(rate, (0, np.pi), np.eye(6).ravel(), method="DOP853", rtol=tolerance, atol=tolerance)
     return np.linalg.eigvals(solution.y[:, -1].reshape(6, 6))

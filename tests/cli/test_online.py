@@ -2,17 +2,22 @@
 
 from __future__ import annotations
 
+import os
+import signal
+import threading
+import time
 from collections.abc import Iterator
 from pathlib import Path
-from typing import Any
+from unittest.mock import Mock
 
 import pytest
 
+from tests import traps
 from tests.cli.typed import Ended
 from tests.cli.typed import trapd as typed
-from tests.running import RunningTrap, running_trap
-from trapd.cli.following import exit_code_of
+from tests.running import RunningTrap, hurried, running_trap
 from trapd.client import Client
+from trapd.errors import InstrumentUnreachable, NotConfirmed, Superseded, TrapdError
 from trapd_simulated import FaultKind
 
 
@@ -88,27 +93,28 @@ def test_no_wait_returns_when_the_move_is_accepted(holding: RunningTrap) -> None
 def test_ctrl_c_says_that_the_ramp_goes_on_and_how_to_end_it(
     holding: RunningTrap, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    def interrupt(*_: Any, **__: Any) -> None:
-        raise KeyboardInterrupt
-
-    monkeypatch.setattr(Client, "follow", interrupt)
+    monkeypatch.setattr(Client, "wait", Mock(side_effect=KeyboardInterrupt))
     ended = trapd(holding, "set endcaps=170V --why x")
     assert ended.code == 130
     for words in ("the ramp continues in the daemon", "`trapd stop` holds it", "`trapd off` ends it"):
         assert words in ended.err
 
 
-@pytest.mark.parametrize(
-    ("state", "last_outcome", "code"),
-    [
-        ("done", "confirmed", 0),
-        ("stopped", "confirmed", 3),
-        ("failed", "not confirmed", 4),
-        ("failed", "unreachable", 5),
-    ],
-)
-def test_a_move_leaves_with_how_it_ended(state: str, last_outcome: str, code: int) -> None:
-    assert exit_code_of({"state": state, "last_outcome": last_outcome}) == code
+def test_ctrl_c_before_its_turn_withdraws_a_request_and_says_so(tmp_path: Path) -> None:
+    with running_trap(tmp_path, hurried(traps.NORTH_BENCH, faster=10)) as trap:
+        trap.switch_on()
+        first = trap.client.set({"endcaps": 800.0}, why="a long way", wait=False)["entry"]
+        threading.Thread(target=interrupt_once_it_waits, args=(trap,), daemon=True).start()
+        ended = trapd(trap, "set endcaps=0V --why 'not so far'")
+        assert ended.code == 130
+        assert "withdrawn: whoever asked went away before its turn; nothing was sent" in ended.err
+        assert trap.client.wait(first)["data"]["to"]["endcaps"] == pytest.approx(800)
+
+
+def interrupt_once_it_waits(trap: RunningTrap) -> None:
+    while not trap.daemon.controller._waiting:
+        time.sleep(0.01)
+    os.kill(os.getpid(), signal.SIGINT)
 
 
 def test_an_instrument_that_ignores_a_command_is_told(tmp_path: Path) -> None:
@@ -119,6 +125,17 @@ def test_an_instrument_that_ignores_a_command_is_told(tmp_path: Path) -> None:
         assert ended.code == 4
         assert ended.out.startswith("failed  ")
         assert "the move stopped there, the outputs hold" in ended.out
+
+
+@pytest.mark.parametrize("kind", [Superseded, NotConfirmed, InstrumentUnreachable])
+def test_a_move_leaves_with_how_it_ended(
+    holding: RunningTrap, monkeypatch: pytest.MonkeyPatch, kind: type[TrapdError]
+) -> None:
+    end = {"entry": 9, "state": "failed", "from": {}, "to": {}}
+    monkeypatch.setattr(Client, "wait", Mock(side_effect=kind("why it ended", end)))
+    ended = trapd(holding, "go work --why x --json")
+    assert ended.code == kind.exit_code
+    assert (ended.json["code"], ended.json["error"], ended.json["result_entry"]) == (kind.code, "why it ended", 9)
 
 
 def test_back_and_go_name_where_they_led(holding: RunningTrap) -> None:
@@ -193,6 +210,7 @@ def test_the_daemon_s_record_is_shown_like_a_file(holding: RunningTrap) -> None:
     online = trapd(holding, "record --kind request --limit 3 --json").json["entries"]
     offline = trapd(holding, f"record --file {holding.record_path} --kind request --limit 3 --json").json["entries"]
     assert online == offline
+    assert "endcaps 120 V to 130 V" in trapd(holding, "record --kind ramp --limit 1").out
     sent = trapd(holding, "record --setpoints --limit 1")
     assert sent.out.splitlines()[1].split()[2:5] == ["endcaps", "130", "V"]
     assert "confirmed" in sent.out

@@ -9,14 +9,14 @@ import signal
 import subprocess
 import sys
 import termios
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from pathlib import Path
-from typing import Any
+from unittest.mock import Mock
 
 import click
 import pytest
 
-from tests.cli.typed import trapd
+from tests.cli.typed import Ended, trapd
 from trapd.cli.program import COMMANDS, MODULES, PROGRAM
 from trapd.errors import NotConfirmed, TrapdError
 
@@ -70,47 +70,39 @@ def errors(kind: type[TrapdError] = TrapdError) -> Iterator[type[TrapdError]]:
             yield from errors(narrower)
 
 
-@pytest.mark.parametrize("kind", list(errors()))
-def test_every_error_leaves_with_its_own_exit_code_and_one_document(
-    kind: type[TrapdError], file: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    def fail(*_: Any) -> None:
-        raise kind("the sentence", {"number": 1})
+Failing = Callable[..., Ended]
 
-    monkeypatch.setattr("trapd.config.read.read", fail)
-    ended = trapd(f"judge {file} --json")
+
+@pytest.fixture
+def failing(file: Path, monkeypatch: pytest.MonkeyPatch) -> Failing:
+    """A command that fails with this error."""
+
+    def run(error: BaseException, options: str = "") -> Ended:
+        monkeypatch.setattr("trapd.cli.offline.read_model", Mock(side_effect=error))
+        return trapd(f"judge {file} {options}")
+
+    return run
+
+
+@pytest.mark.parametrize("kind", list(errors()))
+def test_every_error_leaves_with_its_own_exit_code_and_one_document(kind: type[TrapdError], failing: Failing) -> None:
+    ended = failing(kind("the sentence", {"number": 1}), "--json")
     assert ended.code == kind.exit_code
     assert ended.json == {"code": kind.code, "message": "the sentence", "details": {"number": 1}}
     assert "the sentence" in ended.err
 
 
-def test_a_bug_alone_shows_a_traceback_and_asks_for_a_report(file: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    def fail(*_: Any) -> None:
-        raise ZeroDivisionError("division by zero")
-
-    monkeypatch.setattr("trapd.config.read.read", fail)
-    ended = trapd(f"judge {file}")
+def test_a_bug_alone_shows_a_traceback_and_asks_for_a_report(failing: Failing) -> None:
+    ended = failing(ZeroDivisionError("division by zero"))
     assert ended.code == 1
     assert "Traceback" in ended.err
     assert "Please report it" in ended.err
     assert "bug: ZeroDivisionError: division by zero" in ended.err
+    assert failing(NotConfirmed("rf: did not say so")).err == "not confirmed: rf: did not say so\n"
 
 
-def test_a_deliberate_failure_shows_none(file: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    def fail(*_: Any) -> None:
-        raise NotConfirmed("rf: did not say so")
-
-    monkeypatch.setattr("trapd.config.read.read", fail)
-    ended = trapd(f"judge {file}")
-    assert ended.err == "not confirmed: rf: did not say so\n"
-
-
-def test_ctrl_c_is_a_word_and_130(file: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    def interrupt(*_: Any) -> None:
-        raise KeyboardInterrupt
-
-    monkeypatch.setattr("trapd.config.read.read", interrupt)
-    ended = trapd(f"judge {file}")
+def test_ctrl_c_is_a_word_and_130(failing: Failing) -> None:
+    ended = failing(KeyboardInterrupt())
     assert ended.code == 130
     assert ended.err.strip() == "interrupted"
 

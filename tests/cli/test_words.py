@@ -9,11 +9,10 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from trapd.cli.amounts import amount, assignment, duration, end_of
-from trapd.cli.assignments import read_contents
+from trapd.cli.amounts import amount, assignment, duration, ends_of
 from trapd.cli.entries import sentence
-from trapd.cli.moments import read_moment
 from trapd.cli.status import state_sentence
+from trapd.cli.words import read_contents, read_moment
 from trapd.config.quantity import parse_assignments
 from trapd.errors import BadRequest
 from trapd.setpoint import AMPLITUDE, FREQUENCY, Contents
@@ -60,7 +59,7 @@ def test_a_frequency_survives_pasting(frequency: float) -> None:
 
 @given(VOLTS)
 def test_ends_of_intervals_are_shortened_inwards(volts: float) -> None:
-    upper, lower = (float(end_of(AMPLITUDE, volts, upper=up).split()[0]) for up in (True, False))
+    lower, upper = (float(end.split()[0]) for end in ends_of(AMPLITUDE, {"low": volts, "high": volts}))
     assert upper <= volts * (1 + 1e-12)
     assert lower >= volts * (1 - 1e-12)
     assert lower - upper <= 2e-5 * volts

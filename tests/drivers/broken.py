@@ -43,15 +43,16 @@ class TrustsWhoeverAnswers(ScpiRfSource):
 
 
 class KeepsALateReply(ScpiRfSource):
-    """After its own timeout it goes on with the same connection."""
+    """After a timeout of its own, well before the link's, it goes on with the same connection."""
 
     def __init__(self, *arguments: Any) -> None:
         super().__init__(*arguments)
         link: Any = self._session._link
         receive, drop, late = link._receive_some, link._drop, []
+        own_timeout_s, link.timeout_s = 0.5 * link.timeout_s, 2.0 * link.timeout_s
 
         def receive_within_own_timeout(query: str) -> bytes:
-            link._socket.settimeout(0.8 * link.timeout_s)
+            link._socket.settimeout(own_timeout_s)
             try:
                 return bytes(receive(query))
             except Unreachable as error:

@@ -2,17 +2,23 @@
 
 from __future__ import annotations
 
-from concurrent.futures import ThreadPoolExecutor
-from typing import cast
+from collections.abc import Iterator, Mapping
+from concurrent.futures import Future, ThreadPoolExecutor
+from contextlib import closing, suppress
+from dataclasses import dataclass
+from typing import Any, cast
 
 import pytest
 
 from tests.drivers.broken import BROKEN
 from tests.drivers.rack import DIALECTS, PLAIN, resource
 from trapd_drivers import conformance
-from trapd_drivers.conformance import Bench, Report, assert_conforms
+from trapd_drivers.absent import AbsentDcSupply, AbsentRfSource
+from trapd_drivers.conformance import Bench, Report
 from trapd_drivers.conformance.__main__ import main
-from trapd_drivers.interfaces import Instrument, RfSource
+from trapd_drivers.conformance.controls import Settings, knobs, switches
+from trapd_drivers.errors import DriverError
+from trapd_drivers.interfaces import Instrument, RfSource, Scale
 from trapd_drivers.registry import DriverClass, driver_class, driver_names
 from trapd_drivers.scpi.dc_supply import ScpiDcSupply
 from trapd_drivers.scpi.rf_source import ScpiRfSource
@@ -23,6 +29,78 @@ BENCHES = {"scpi-rf-source": "rf", "scpi-dc-supply": "dc"}
 
 CANNOT_TELL = {"other": {14}}  # this dialect has no measurement
 NO_CHANNELS = {"scpi-rf-source": {15, 16}}
+TIMEOUTS_S = (0.25, 1.0)
+"""Of the driver. What is not as expected is examined once more with time for a machine that is busy with something else."""
+
+
+Key = tuple[str | type[Instrument], str]  # a driver, the name of one or of a stand-in, and a profile
+Reports = dict[Key, Future[Report]]
+
+
+@dataclass(frozen=True)
+class StandIn:
+    """A stand-in whose instrument has come: before that it knows no limits and cannot refuse without asking."""
+
+    absent: type[AbsentRfSource | AbsentDcSupply]
+    driver: DriverClass
+
+    def open(self, resource: str, *, profile: str = "plain", timeout_s: float = 1.0) -> Instrument:
+        def open_() -> Instrument:
+            return self.driver.open(resource, profile=profile, timeout_s=timeout_s)
+
+        found = self.absent(resource, open_, self.driver.scales(profile))
+        found.read_identity()
+        return found
+
+    def scales(self, profile: str) -> Mapping[tuple[str, int], Scale]:
+        return self.driver.scales(profile)
+
+
+STAND_INS = {"rf": StandIn(AbsentRfSource, ScpiRfSource), "dc": StandIn(AbsentDcSupply, ScpiDcSupply)}
+
+
+def examined(driver: DriverClass, on: str, profile: str, fails: tuple[int, ...]) -> Report:
+    """The report of a full run; and proof that what a conforming driver's run found it also left."""
+    report = Report(driver="none was opened", resource="", results=())
+    for timeout_s in TIMEOUTS_S:
+        with Rack(DIALECTS[profile]) as rack, suppress(DriverError):
+            bench = Bench(
+                driver=driver, resource=resource(rack, on), profile=profile, timeout_s=timeout_s, allow_output=True
+            )
+            before = None if fails else stirred(bench)
+            report = conformance.run(bench)
+            if before is not None:
+                with closing(bench.open(timeout_s=5.0)) as instrument:
+                    assert before.hold_at(instrument), report
+        if report.results and report.clauses("fail") == fails:
+            break
+    return report
+
+
+def stirred(bench: Bench) -> Settings:
+    """The settings of an instrument that is in use, output on."""
+    with closing(bench.open(timeout_s=5.0)) as instrument:
+        for knob in knobs(instrument):
+            knob.set(knob.small(0.1))
+        for switch in switches(instrument):
+            switch.set(True)
+        return Settings.of(instrument)
+
+
+@pytest.fixture(scope="module")
+def reports() -> Iterator[Reports]:
+    """All runs, each with a rack of its own; they mostly wait, so they wait together."""
+    runs: dict[Key, tuple[object, str, str, tuple[int, ...]]] = {
+        **{(broken, "plain"): (broken, on(broken), "plain", (clause,)) for clause, broken in BROKEN},
+        **{(name, one): (driver_class(name), BENCHES[name], one, ()) for name in driver_names() for one in DIALECTS},
+        **{(where, "plain"): (stand_in, where, "plain", ()) for where, stand_in in STAND_INS.items()},
+    }
+    with ThreadPoolExecutor(10) as pool:
+        yield {key: pool.submit(examined, *cast(Any, run)) for key, run in runs.items()}
+
+
+def on(driver: type[Instrument]) -> str:
+    return "rf" if issubclass(driver, RfSource) else "dc"
 
 
 def test_every_registered_driver_has_a_bench() -> None:
@@ -31,61 +109,32 @@ def test_every_registered_driver_has_a_bench() -> None:
 
 @pytest.mark.parametrize("profile", DIALECTS)
 @pytest.mark.parametrize("name", driver_names())
-def test_a_registered_driver_conforms_in_every_dialect(name: str, profile: str) -> None:
-    with Rack(DIALECTS[profile]) as rack:
-        report = assert_conforms(
-            driver_class(name), resource(rack, BENCHES[name]), profile=profile, timeout_s=0.4, allow_output=True
-        )
+def test_a_registered_driver_conforms_in_every_dialect_and_its_instrument_is_left_as_it_was(
+    name: str, profile: str, reports: Reports
+) -> None:
+    report = reports[name, profile].result()
+    assert report.conforms, str(report)
     dialect = next((word for word in CANNOT_TELL if word in profile), "")
     assert set(report.clauses("skipped")) == NO_CHANNELS.get(name, set()) | CANNOT_TELL.get(dialect, set())
 
 
-@pytest.fixture(scope="module")
-def reports() -> dict[type[Instrument], Report]:
-    """All broken drivers, each with a rack of its own; they mostly wait, so they wait together."""
-
-    def examine(driver: type[Instrument]) -> Report:
-        with Rack(PLAIN) as rack:
-            where = resource(rack, "rf" if issubclass(driver, RfSource) else "dc")
-            return conformance.run(
-                Bench(driver=cast(DriverClass, driver), resource=where, timeout_s=0.4, allow_output=True)
-            )
-
-    with ThreadPoolExecutor(8) as pool:
-        drivers = [driver for _, driver in BROKEN]
-        return dict(zip(drivers, pool.map(examine, drivers), strict=True))
+@pytest.mark.parametrize("where", STAND_INS)
+def test_a_stand_in_whose_instrument_has_come_conforms(where: str, reports: Reports) -> None:
+    report = reports[where, "plain"].result()
+    assert report.conforms, str(report)
 
 
 @pytest.mark.parametrize(("clause", "driver"), BROKEN, ids=lambda one: getattr(one, "__name__", str(one)))
 def test_a_broken_driver_fails_on_its_own_clause_and_no_other(
-    clause: int, driver: type[Instrument], reports: dict[type[Instrument], Report]
+    clause: int, driver: type[Instrument], reports: Reports
 ) -> None:
-    assert reports[driver].clauses("fail") == (clause,), str(reports[driver])
-    assert not reports[driver].conforms
+    report = reports[driver, "plain"].result()
+    assert report.clauses("fail") == (clause,), str(report)
+    assert not report.conforms
 
 
 def test_every_clause_has_a_driver_that_breaks_it() -> None:
     assert {clause for clause, _ in BROKEN} == set(range(1, len(conformance.CLAUSES) + 1))
-
-
-def test_without_permission_nothing_is_set() -> None:
-    with Rack(PLAIN) as rack:
-        report = assert_conforms(ScpiDcSupply, resource(rack, "dc"), timeout_s=0.4)
-        queries = [one.text for one in rack.received if "?" in one.text or one.text == "TRAPD:NOSUCH"]
-        assert [one.text for one in rack.received] == queries
-    assert set(report.clauses("skipped")) == set(range(9, 17))
-    assert "8 of 16 clauses were not tried" in str(report)
-
-
-def test_the_state_is_left_as_it_was_found() -> None:
-    with Rack(PLAIN) as rack:
-        source = ScpiRfSource.open(resource(rack, "rf"))
-        source.set_frequency_hz(21e6)
-        source.set_level_v(0.5)
-        source.set_output(True)
-        assert_conforms(ScpiRfSource, resource(rack, "rf"), timeout_s=0.4, allow_output=True)
-        assert (source.read_frequency_hz(), source.read_level_v(), source.read_output()) == (21e6, 0.5, True)
-        source.close()
 
 
 def test_a_report_of_nothing_but_skipped_clauses_is_no_conformance() -> None:
@@ -93,13 +142,22 @@ def test_a_report_of_nothing_but_skipped_clauses_is_no_conformance() -> None:
     assert not Report(driver="", resource="", results=(skipped,)).conforms
 
 
-def test_the_command_prints_the_report_and_says_the_verdict_in_its_exit_code(
+def test_the_command_sets_nothing_without_permission_and_says_the_verdict_in_its_exit_code(
     capsys: pytest.CaptureFixture[str],
 ) -> None:
-    with Rack(PLAIN) as rack:
-        assert main(["scpi-rf-source", resource(rack, "rf"), "--timeout", "0.4"]) == 0
-        address = resource(rack, "rf")
-    assert "ScpiRfSource at" in capsys.readouterr().out
-    assert main(["scpi-rf-source", address, "--timeout", "0.4"]) == 5
+    for timeout_s in TIMEOUTS_S:
+        with Rack(PLAIN) as rack:
+            address = resource(rack, "dc")
+            code = main(["scpi-dc-supply", address, "--timeout", str(timeout_s)])
+            units = {unit for one in rack.received for unit in one.text.split(";") if "?" not in unit}
+        assert units == {"TRAPD:NOSUCH"}  # which no instrument knows: the kit provokes an error to see it reported
+        if code == 0:
+            break
+    printed = capsys.readouterr().out
+    assert code == 0, printed
+    assert "ScpiDcSupply at" in printed
+    assert "8 of 16 clauses were not tried" in printed
+    assert printed.count("skipped") == len(range(9, 17))
+    assert main(["scpi-dc-supply", address, "--timeout", "0.2"]) == 5
     assert main(["no-such-driver", address]) == 2
     assert "no-such-driver" in capsys.readouterr().err

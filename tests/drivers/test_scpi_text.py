@@ -117,20 +117,8 @@ def test_response_numbers_are_read(text: str, value: float) -> None:
     "text",
     [
         "",
-        "1,0",
-        "1.0.0",
-        "#H1F",
-        "0x10",
-        "NAN",
-        "INF",
         "1 0",
-        "1e",
-        "--1",
-        "1.0V",
-        "1_000",
-        "9.91E+37",
-        "9.9E37",
-        "-9.9E37",
+        *["1,0", "1.0.0", "#H1F", "0x10", "NAN", "INF", "1e", "--1", "1.0V", "1_000", "9.91E+37", "9.9E37", "-9.9E37"],
     ],
 )
 def test_what_is_no_number_is_malformed(text: str) -> None:

@@ -4,7 +4,9 @@ from __future__ import annotations
 
 import threading
 import time
+from collections.abc import Iterator
 from concurrent.futures import CancelledError, Future
+from contextlib import contextmanager
 from operator import methodcaller
 from typing import Any
 
@@ -60,19 +62,27 @@ def result(future: Future[Any]) -> Any:
     return future.result(timeout=5)
 
 
-def test_jobs_run_in_order_and_urgent_ones_before_the_others() -> None:
+@contextmanager
+def holding(patience_s: float = 30.0, *, deaf: bool = False) -> Iterator[tuple[Bell, Worker[Bell], Future[str]]]:
+    """A worker in the middle of a job that ends only when it is interrupted or released."""
     bell = Bell()
-    worker = Worker(bell, "bell", patience_s=30)
+    bell.deaf = deaf
+    worker = Worker(bell, "bell", patience_s=patience_s)
     held = worker.submit(Bell.hold)
-    bell.entered.wait(5)
-    futures = [worker.submit(methodcaller("note", name)) for name in ("first", "second")]
-    futures += [worker.submit(methodcaller("note", name), urgent=True) for name in ("off", "off again")]
-    bell.released.set()
-    assert result(held) == "released"
-    for future in futures:
-        result(future)
-    assert bell.calls == ["off", "off again", "first", "second"]
+    assert bell.entered.wait(5)
+    yield bell, worker, held
     assert worker.close(5)
+
+
+def test_jobs_run_in_order_and_urgent_ones_before_the_others() -> None:
+    with holding() as (bell, worker, held):
+        futures = [worker.submit(methodcaller("note", name)) for name in ("first", "second")]
+        futures += [worker.submit(methodcaller("note", name), urgent=True) for name in ("off", "off again")]
+        bell.released.set()
+        assert result(held) == "released"
+        for future in futures:
+            result(future)
+        assert bell.calls == ["off", "off again", "first", "second"]
 
 
 def test_all_jobs_run_in_one_thread_which_is_not_the_callers() -> None:
@@ -84,54 +94,41 @@ def test_all_jobs_run_in_one_thread_which_is_not_the_callers() -> None:
 
 
 def test_an_urgent_job_does_not_wait_for_a_hung_one() -> None:
-    bell = Bell()
-    worker = Worker(bell, "bell", patience_s=0.1)
-    held = worker.submit(Bell.hold)
-    bell.entered.wait(5)
-    start_s = time.monotonic()
-    off = worker.submit(lambda it: it.note("off"), urgent=True)
-    assert result(off) == "off"
-    assert 0.09 < time.monotonic() - start_s < 1.0
-    with pytest.raises(Unreachable):
-        result(held)
-    assert worker.close(5)
+    with holding(0.1) as (_, worker, held):
+        start_s = time.monotonic()
+        off = worker.submit(lambda it: it.note("off"), urgent=True)
+        assert result(off) == "off"
+        assert 0.09 < time.monotonic() - start_s < 1.0
+        with pytest.raises(Unreachable):
+            result(held)
 
 
 def test_the_interrupt_is_repeated_until_the_hung_job_ends_and_never_meets_the_urgent_one() -> None:
-    bell = Bell()
-    bell.deaf = True
-    worker = Worker(bell, "bell", patience_s=0.02)
-    held = worker.submit(Bell.hold)
-    bell.entered.wait(5)
-    counted: list[int] = []
+    with holding(0.02, deaf=True) as (bell, worker, held):
+        counted: list[int] = []
 
-    def off(it: Bell) -> None:
-        counted.append(it.interrupts)
-        threading.Event().wait(0.2)  # ten times the patience: room for an interrupt that should not come
-        counted.append(it.interrupts)
+        def off(it: Bell) -> None:
+            counted.append(it.interrupts)
+            threading.Event().wait(0.2)  # ten times the patience: room for an interrupt that should not come
+            counted.append(it.interrupts)
 
-    urgent = worker.submit(off, urgent=True)
-    while bell.interrupts < 3:
-        time.sleep(0.005)
-    bell.released.set()
-    result(urgent)
-    with pytest.raises(Unreachable):
-        result(held)
-    assert counted[0] == counted[1] >= 3
-    assert worker.close(5)
+        urgent = worker.submit(off, urgent=True)
+        while bell.interrupts < 3:
+            time.sleep(0.005)
+        bell.released.set()
+        result(urgent)
+        with pytest.raises(Unreachable):
+            result(held)
+        assert counted[0] == counted[1] >= 3
 
 
 def test_an_ordinary_job_interrupts_nothing() -> None:
-    bell = Bell()
-    worker = Worker(bell, "bell", patience_s=0.01)
-    held = worker.submit(Bell.hold)
-    bell.entered.wait(5)
-    worker.submit(lambda it: it.note("next"))
-    threading.Event().wait(0.1)
-    assert bell.interrupts == 0
-    bell.released.set()
-    assert result(held) == "released"
-    assert worker.close(5)
+    with holding(0.01) as (bell, worker, held):
+        worker.submit(lambda it: it.note("next"))
+        threading.Event().wait(0.1)
+        assert bell.interrupts == 0
+        bell.released.set()
+        assert result(held) == "released"
 
 
 def test_what_a_job_raises_goes_to_its_future_and_the_worker_lives_on() -> None:
@@ -143,20 +140,16 @@ def test_what_a_job_raises_goes_to_its_future_and_the_worker_lives_on() -> None:
 
 
 def test_pending_jobs_can_be_cancelled_but_not_the_urgent_ones() -> None:
-    bell = Bell()
-    worker = Worker(bell, "bell", patience_s=30)
-    held = worker.submit(Bell.hold)
-    bell.entered.wait(5)
-    ordinary = [worker.submit(lambda it: it.note("step")) for _ in range(3)]
-    off = worker.submit(lambda it: it.note("off"), urgent=True)
-    assert worker.cancel_pending() == 3
-    bell.released.set()
-    assert (result(held), result(off)) == ("released", "off")
-    for future in ordinary:
-        with pytest.raises(CancelledError):
-            result(future)
-    assert bell.calls == ["off"]
-    assert worker.close(5)
+    with holding() as (bell, worker, held):
+        ordinary = [worker.submit(lambda it: it.note("step")) for _ in range(3)]
+        off = worker.submit(lambda it: it.note("off"), urgent=True)
+        assert worker.cancel_pending() == 3
+        bell.released.set()
+        assert (result(held), result(off)) == ("released", "off")
+        for future in ordinary:
+            with pytest.raises(CancelledError):
+                result(future)
+        assert bell.calls == ["off"]
 
 
 def test_close_ends_a_hung_job_answers_every_future_and_closes_the_instrument() -> None:

@@ -116,4 +116,4 @@ def _move(serving: Serving, target_v: float) -> None:
     from trapd.client import Client
 
     with suppress(TrapdError):  # the daemon is killed under it
-        Client(serving.socket).set({"endcaps": target_v}, why="a long way")
+        Client(serving.socket).set({"endcaps": target_v}, why="a long way", wait=False)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from typing import Any
 
 from trapd.setpoint import AMPLITUDE, FREQUENCY, unit_of
 
@@ -33,10 +34,12 @@ def value_of(setpoint: str, value: float | None) -> str:
     return amount(value, unit, _digits_of(unit))
 
 
-def end_of(setpoint: str, value: float, *, upper: bool) -> str:
-    """An end of an interval, shortened inwards, so that what is read can be asked for."""
+def ends_of(setpoint: str, interval: Mapping[str, Any]) -> tuple[str, str]:
+    """Low and high end of an interval, shortened inwards, so that what is read can be asked for."""
     unit = unit_of(setpoint)
-    return amount(_shortened(value, _digits_of(unit), up=not upper), unit, _digits_of(unit))
+    digits = _digits_of(unit)
+    low, high = (_shortened(interval[end], digits, up=end == "low") for end in ("low", "high"))
+    return amount(low, unit, digits), amount(high, unit, digits)
 
 
 def assignment(setpoint: str, value: float, asked: float | None = None) -> str:

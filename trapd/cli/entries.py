@@ -4,12 +4,10 @@ from __future__ import annotations
 
 import json
 from collections.abc import Callable, Mapping
-from typing import Any
 
 from trapd.cli.amounts import amount, duration, in_order, value_of
+from trapd.cli.answer import Data
 from trapd.setpoint import FREQUENCY
-
-Data = Mapping[str, Any]
 
 _LONGEST = 160
 
@@ -63,12 +61,11 @@ def _verdict(data: Data) -> str:
 
 
 def _ramp(data: Data) -> str:
-    seconds = sum(step["wait_s"] for step in data["steps"])
-    moved = dict.fromkeys(step["setpoint"] for step in data["steps"])
     ways = ", then ".join(
-        f"{name} {value_of(name, data['start'][name])} to {value_of(name, data['target'][name])}" for name in moved
+        f"{one['setpoint']} {value_of(one['setpoint'], one['from'])} to {value_of(one['setpoint'], one['to'])}"
+        for one in data["stretches"]
     )
-    return f"{len(data['steps'])} steps, {seconds:.1f} s: {ways}"
+    return f"{sum(one['steps'] for one in data['stretches'])} steps, {duration(data['duration_s'])}: {ways}"
 
 
 def _intent(data: Data) -> str:
@@ -87,10 +84,6 @@ def _result(data: Data) -> str:
     return f"of {data['request']}: {data['state']}" + (f": {data['error']}" if data["error"] else "")
 
 
-def _contents(data: Data) -> str:
-    return contents_words(data) + _why(data)
-
-
 def _off(data: Data) -> str:
     said = (
         f"{name} {'off' if one['off'] else 'NOT CONFIRMED'} after {duration(one['after_s'])}"
@@ -103,14 +96,6 @@ def _token(data: Data) -> str:
     return f"{data['action']} {data['name']}" + (f" ({data['role']})" if data.get("role") else "")
 
 
-def _start(data: Data) -> str:
-    return ", ".join(f"{name} {version}" for name, version in data["software"].items())
-
-
-def _configuration(data: Data) -> str:
-    return str(data["source"])
-
-
 _SENTENCES: Mapping[str, Callable[[Data], str]] = {
     "request": _request,
     "verdict": _verdict,
@@ -118,10 +103,11 @@ _SENTENCES: Mapping[str, Callable[[Data], str]] = {
     "intent": _intent,
     "outcome": _outcome,
     "result": _result,
-    "contents": _contents,
+    "contents": lambda data: contents_words(data) + _why(data),
     "off": _off,
     "token": _token,
-    "start": _start,
-    "configuration": _configuration,
+    "start": lambda data: ", ".join(f"{name} {version}" for name, version in data["software"].items()),
+    "configuration": lambda data: str(data["source"]),
     "heartbeat": lambda data: _values(data["values"]),
+    "found": lambda data: "; ".join(data["differences"]),
 }

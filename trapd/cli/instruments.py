@@ -12,7 +12,7 @@ from trapd.instrument_lock import InstrumentLocks
 from trapd.wiring import Wiring
 from trapd_drivers.errors import DriverError, ProfileError
 from trapd_drivers.interfaces import Instrument
-from trapd_drivers.registry import open_instrument
+from trapd_drivers.registry import open_instrument, scales_of
 
 
 def identify(config: Config) -> dict[str, Any]:
@@ -53,3 +53,12 @@ def _ask(name: str, section: InstrumentSection, config: Config, opened: dict[str
             opened.pop(name).close()
         return {**answer, "identity": None, "status": None, "error": str(error)}
     return {**answer, "identity": asdict(identity), "status": asdict(status), "error": None}
+
+
+def require_drivers(config: Config) -> None:
+    """Every driver is registered and every dialect profile can be read; nothing is opened."""
+    for name, section in config.instruments.items():
+        try:
+            scales_of(section.driver, section.profile)
+        except ProfileError as error:
+            raise ConfigError(f"{config.source}: instruments.{name}: {error}") from error

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import sys
 import traceback
@@ -12,6 +13,7 @@ from typing import Any, NoReturn
 
 import click
 
+from trapd.cautions import CAUTIONS
 from trapd.cli.answer import INTERRUPTED, tell_error
 from trapd.errors import Bug, TrapdError
 
@@ -23,12 +25,12 @@ COMMANDS: Mapping[str, Mapping[str, str]] = {
     "Ask without a daemon": {"judge": "judge", "window": "window"},
     "The running daemon": {
         "status": "status",
-        "on": "switching",
+        "on": "moves",
         "set": "moves",
         "go": "moves",
         "back": "moves",
         "ions": "ions",
-        "empty": "switching",
+        "empty": "moves",
         "stop": "off",
         "off": "off",
     },
@@ -36,10 +38,6 @@ COMMANDS: Mapping[str, Mapping[str, str]] = {
     "People": {"token": "token"},
 }
 """Heading to command to the module of this package that defines it, under its own name with `_command` after it."""
-
-CAUTIONS = """\
-trapd protects the experiment, not people: RF burns, high voltage and stored charge, lasers and vacuum stay dangerous.
-It is no safety device: hardware interlocks come first, and local rules and qualified people decide."""
 
 MODULES = {name: module for group in COMMANDS.values() for name, module in group.items()}
 
@@ -69,14 +67,10 @@ class Program(click.Group):
     def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
         widest = max(map(len, MODULES))
         for heading, names in COMMANDS.items():
+            commands = {name: self.get_command(ctx, name) for name in names}
+            rows = [(name.ljust(widest), one.get_short_help_str(120)) for name, one in commands.items() if one]
             with formatter.section(heading):
-                rows = [(name.ljust(widest), self._short_help(ctx, name)) for name in names]
                 formatter.write_dl(rows)
-
-    def _short_help(self, ctx: click.Context, name: str) -> str:
-        command = self.get_command(ctx, name)
-        assert command is not None
-        return command.get_short_help_str(limit=120)
 
     def invoke(self, ctx: click.Context) -> Any:
         try:
@@ -91,6 +85,11 @@ class Program(click.Group):
             ctx.exit(INTERRUPTED)
         except (click.ClickException, click.exceptions.Exit, click.Abort):
             raise
+        except OSError as error:
+            if error.errno != errno.ENOSPC:  # else our own output has nowhere to go
+                _fail(ctx, _bug(error))
+            click.echo(f"the output cannot be written: {error.strerror}", err=True)
+            _leave_quietly(ctx, 1)
         except Exception as error:
             _fail(ctx, _bug(error))
         return answer
@@ -113,10 +112,10 @@ def _fail(ctx: click.Context, error: TrapdError) -> NoReturn:
     ctx.exit(error.exit_code)
 
 
-def _leave_quietly(ctx: click.Context) -> NoReturn:
+def _leave_quietly(ctx: click.Context, exit_code: int = BROKEN_PIPE) -> NoReturn:
     """Whoever read our output has stopped; Python must not complain about it once more when it flushes at the end."""
     os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-    ctx.exit(BROKEN_PIPE)
+    ctx.exit(exit_code)
 
 
 @click.group(

@@ -3,29 +3,35 @@
 from __future__ import annotations
 
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import asdict
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import Any
 
 import click
 
-from trapd.cli.answer import examples, json_option, tell_json, wants_json
-from trapd.cli.daemon import daemon_option, not_both
-from trapd.cli.moments import read_moment
-from trapd.cli.sources import Asked, DaemonSource, FileSource, Row, Rows, Source
+from trapd.cli.amounts import value_of
+from trapd.cli.answer import Data, tell, wants_json
+from trapd.cli.entries import sentence
+from trapd.cli.options import at_option, command
+from trapd.cli.terminal import FAINT, say, table
+from trapd.cli.words import read_moment
+from trapd.client import Client
 from trapd.errors import BadRequest
 
+Rows = list[dict[str, Any]]
 
-@click.command(
-    "record",
-    short_help="What was asked, judged, sent and read back.",
-    epilog=examples(
-        "trapd record --since 1h",
-        "trapd record --kind request --who ada --limit 5",
-        "trapd record --setpoints --since 10min --json",
-        "trapd record --file trapd.sqlite --refused",
-        "trapd record --file trapd.sqlite --export csv setpoints.csv",
-    ),
+_MOST = 1000
+"""Verdicts looked through for refusals."""
+
+
+@command(
+    "trapd record --since 1h",
+    "trapd record --kind request --who ada --limit 5",
+    "trapd record --setpoints --since 10min --json",
+    "trapd record --file trapd.sqlite --refused",
+    "trapd record --file trapd.sqlite --export csv setpoints.csv",
 )
 @click.option("--file", type=click.Path(path_type=Path), help="Ask this record, not a daemon.")
 @click.option("--since", metavar="WHEN", help="A while ago (90s, 30min, 1h, 2d), or a time.")
@@ -42,8 +48,7 @@ from trapd.errors import BadRequest
     metavar="FORMAT PATH",
     help="Copy all of it out: csv (what was sent and read back) or jsonl (every entry); - for standard output.",
 )
-@json_option
-@daemon_option
+@at_option
 def record_command(
     file: Path | None,
     since: str | None,
@@ -55,11 +60,12 @@ def record_command(
     export: tuple[str, Path] | None,
     at: str | None,
 ) -> None:
-    """The record, newest last: every entry, or with --setpoints what was sent, with --refused what was not.
+    """What was asked, judged, sent and read back. The newest last: every entry, or with --setpoints what was sent, with
+    --refused what was not.
 
     Asks the running daemon, or a file with --file, also while a daemon writes it. Times are UTC.
     """
-    not_both(file, at)
+    one_source(file, at)
     if setpoints and refused:
         raise BadRequest("--setpoints and --refused are two different tables; choose one")
     if kind and (setpoints or refused):
@@ -67,79 +73,95 @@ def record_command(
     if export is not None:
         _export(file, *export)
         return
+    name = "setpoints" if setpoints else "refusals" if refused else "entries"
     moment = None if since is None else read_moment(since, datetime.now(UTC))
-    asked = Asked(limit=limit, kind=kind, who=who, since=moment)
-    source: Source = FileSource(file) if file is not None else DaemonSource(at)
-    if setpoints:
-        _tell("setpoints", source.setpoints(asked), _show_setpoints)
-    elif refused:
-        _tell("refusals", source.refusals(asked), _show_refusals)
-    else:
-        _tell("entries", source.entries(asked), _show_entries)
+    asked: dict[str, Any] = {"kind": kind, "who": who, "limit": limit, "since": moment}
+    rows = _from_daemon(at, name, **asked) if file is None else _from_file(file, name, **asked)
+    tell({name: rows}, lambda _: _show(name, rows))
+    if len(rows) == limit and not wants_json():
+        say((f"the newest {limit}; --limit shows more", FAINT))
 
 
-def _tell(name: str, rows: Rows, show: Callable[[Rows], None]) -> None:
-    if wants_json():
-        tell_json({name: rows})
-    elif rows:
-        show(rows)
-    else:
+def one_source(file: Path | None, at: str | None) -> None:
+    """A file is asked instead of a daemon."""
+    if file is not None and at is not None:
+        raise BadRequest("--file asks a file and --at a daemon; leave out --at, or leave out --file")
+
+
+def _from_file(file: Path, name: str, *, kind: str | None, who: str | None, since: datetime | None, limit: int) -> Rows:
+    """Rows in order, the newest last, every one with its ``seq`` and ``time`` (RFC 3339, UTC)."""
+    from trapd.record import Reader, rfc3339
+
+    asked: dict[str, Any] = {"limit": limit, "newest": True, "since_us": since and round(since.timestamp() * 1e6)}
+    found: Sequence[Any]
+    with Reader.open(file) as reader:
+        if name == "entries":
+            found = reader.entries(actor=who, kind=kind, **asked)
+        else:
+            found = (reader.setpoints if name == "setpoints" else reader.refusals)(who=who, **asked)
+    return [{"seq": one.seq, "time": rfc3339(one.time_us), **asdict(one)} for one in found]
+
+
+def _from_daemon(at: str | None, name: str, *, kind: str | None, who: str | None, limit: int, since: Any) -> Rows:
+    """The same rows."""
+    with Client(at) as client:
+        if name == "entries":
+            return client.entries(kind=kind, actor=who, limit=limit, since=since)
+        if name == "setpoints":
+            return client.setpoints(who=who, limit=limit, since=since)
+        verdicts = client.entries(kind="verdict", actor=who, limit=_MOST, since=since)
+        refused = [one for one in verdicts if not one["data"]["accepted"]][-limit:]
+        rows = [row for one in refused for row in _refusals(one, client.entry(one["data"]["request"]))]
+    return rows[-limit:]
+
+
+def _refusals(verdict: Data, request: Data) -> Rows:
+    """The rows that the record's own view `refusals` gives."""
+    head = {key: verdict[key] for key in ("seq", "time", "time_us")}
+    head |= {"request": request["seq"], "who": verdict["actor"], "why": request["data"]["why"]}
+    return [{**head, **reason} for reason in verdict["data"]["reasons"]]
+
+
+def _sent(one: Data) -> tuple[str, ...]:
+    value, back = (_value(one, one[key]) for key in ("value", "readback"))
+    error = f" ({one['error']})" if one["error"] else ""
+    return one["setpoint"], value, back, one["state"], f"{one['who']}: {one['why']}{error}"
+
+
+def _value(one: Data, value: float | None) -> str:
+    if one["quantity"] != "output" or value is None:
+        return value_of(one["setpoint"], value)
+    return "on" if value else "off"
+
+
+def _refused(one: Data) -> tuple[str, ...]:
+    why = f" (asked because: {one['why']})" if one["why"] else ""
+    return one["who"], one["rule"], f"{one['message']}{why}"
+
+
+_TABLES: Mapping[str, tuple[tuple[str, ...], Callable[[Data], tuple[str, ...]]]] = {
+    "entries": (("who", "kind", "what"), lambda one: (one["actor"], one["kind"], sentence(one))),
+    "setpoints": (("setpoint", ">value", ">read back", "state", "who: why"), _sent),
+    "refusals": (("who", "rule", "what was refused"), _refused),
+}
+"""By name: the columns beside entry and time, and a row's cells in them."""
+
+
+def _show(name: str, rows: Rows) -> None:
+    """Times to the millisecond, and the day only once when it is all one day."""
+    if not rows:
         click.echo("nothing in the record matches")
-
-
-def _show_entries(rows: Rows) -> None:
-    from trapd.cli.entries import sentence
-    from trapd.cli.terminal import table
-
-    heading, times = _times(rows)
-    lines = [(str(one["seq"]), times(one), one["actor"], one["kind"], sentence(one)) for one in rows]
-    table((">entry", heading, "who", "kind", "what"), lines)
-
-
-def _show_setpoints(rows: Rows) -> None:
-    from trapd.cli.amounts import value_of
-    from trapd.cli.terminal import table
-
-    heading, times = _times(rows)
-    lines = []
-    for one in rows:
-        output = one["quantity"] == "output"
-        value, back = (
-            _on_off(one[key]) if output else value_of(one["setpoint"], one[key]) for key in ("value", "readback")
-        )
-        error = f" ({one['error']})" if one["error"] else ""
-        why = f"{one['who']}: {one['why']}{error}"
-        lines.append((str(one["seq"]), times(one), one["setpoint"], value, back, one["state"], why))
-    table((">entry", heading, "setpoint", ">value", ">read back", "state", "who: why"), lines)
-
-
-def _show_refusals(rows: Rows) -> None:
-    from trapd.cli.terminal import table
-
-    heading, times = _times(rows)
-    lines = [(str(one["seq"]), times(one), one["who"], one["rule"], _refused(one)) for one in rows]
-    table((">entry", heading, "who", "rule", "what was refused"), lines)
-
-
-def _times(rows: Rows) -> tuple[str, Callable[[Row], str]]:
-    """Heading and cells of the column of times: to the millisecond, the day only once when it is all one day."""
+        return
+    columns, cells = _TABLES[name]
     days = sorted({one["time"].partition("T")[0] for one in rows})
-    one_day = len(days) == 1
 
-    def cell(one: Row) -> str:
+    def time(one: Data) -> str:
         day, _, clock = one["time"].partition("T")
-        short = clock.rstrip("Z")[:12]
-        return short if one_day else f"{day} {short}"
+        short: str = clock.rstrip("Z")[:12]
+        return short if len(days) == 1 else f"{day} {short}"
 
-    return (f"UTC {days[0]}" if one_day else "UTC"), cell
-
-
-def _refused(refusal: Row) -> str:
-    return f"{refusal['message']} (asked because: {refusal['why']})" if refusal["why"] else str(refusal["message"])
-
-
-def _on_off(value: float | None) -> str:
-    return "-" if value is None else "on" if value else "off"
+    heading = f"UTC {days[0]}" if len(days) == 1 else "UTC"
+    table((">entry", heading, *columns), [(str(one["seq"]), time(one), *cells(one)) for one in rows])
 
 
 def _export(file: Path | None, form: str, path: Path) -> None:
@@ -160,7 +182,4 @@ def _export(file: Path | None, form: str, path: Path) -> None:
         raise BadRequest(f"{path} exists already; nothing was exported") from None
     except OSError as error:
         raise BadRequest(f"{path}: {error.strerror}; nothing was exported") from error
-    if wants_json():
-        tell_json({"rows": rows, "format": form, "path": str(path)})
-    else:
-        click.echo(f"{rows} rows to {path}")
+    tell({"rows": rows, "format": form, "path": str(path)}, lambda _: click.echo(f"{rows} rows to {path}"))

@@ -6,13 +6,11 @@ from pathlib import Path
 
 import click
 
-from trapd.cli.answer import examples, json_option, leave_with
-from trapd.cli.offline import file_argument
+from trapd.cli.options import command, file_argument
 
 
-@click.command("serve", short_help="Run the daemon of one trap.", epilog=examples("trapd serve trap.toml"))
+@command("trapd serve trap.toml")
 @file_argument
-@json_option
 def serve_command(file: Path) -> None:
     """Run the daemon of one trap until SIGTERM or Ctrl-C. Every output stays as it is, at the start and at the end.
 
@@ -20,4 +18,4 @@ def serve_command(file: Path) -> None:
     """
     from trapd.daemon import serve
 
-    leave_with(serve(file))
+    click.get_current_context().exit(serve(file))

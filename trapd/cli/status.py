@@ -2,131 +2,96 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from typing import TYPE_CHECKING, Any
-
-import click
-
-from trapd.cli.answer import examples, json_option, tell_json, wants_json
-from trapd.cli.daemon import connect, daemon_option
+from trapd.cli.amounts import ends_of, value_of
+from trapd.cli.answer import Data, tell, wants_json
+from trapd.cli.entries import contents_words
+from trapd.cli.options import at_option, command
+from trapd.cli.terminal import BAD, CAREFUL, FAINT, STRONG, say, table
+from trapd.cli.verdicts import show_reasons, show_species, show_warnings
+from trapd.client import Client
 from trapd.errors import TrapdError
 from trapd.setpoint import AMPLITUDE, FREQUENCY
 
-if TYPE_CHECKING:
-    from trapd.client import Client
 
-Data = Mapping[str, Any]
-
-
-@click.command(
-    "status",
-    short_help="What the trap is doing.",
-    epilog=examples("trapd status", "trapd status --at trap.toml", "trapd status --json"),
-)
-@json_option
-@daemon_option
+@command("trapd status", "trapd status --at trap.toml", "trapd status --json")
+@at_option
 def status_command(at: str | None) -> None:
-    """What the trap is doing: the state in a sentence, every setpoint, every species, and what is in doubt."""
-    with connect(at) as client:
+    """What the trap is doing. The state in a sentence, every setpoint, every species, and what is in doubt."""
+    with Client(at) as client:
         status = client.status()
-        if wants_json():
-            tell_json(status)
-            return
-        trap = client.trap()
-        allowed = _allowed_now(client) if status["situation"]["outputs"].get("drive.output") else {}
-    show_status(status, trap, allowed)
+        trap = {} if wants_json() else client.trap()
+        allowed = {} if wants_json() or not _is_driven(status["situation"]) else _allowed_now(client)
+    tell(status, lambda _: _show(status, trap, allowed))
+
+
+def _is_driven(situation: Data) -> bool:
+    return bool(situation["outputs"].get("drive.output"))
 
 
 def _allowed_now(client: Client) -> Data:
     """Empty where it cannot be told (a value not known, a full queue): the rest is worth showing."""
     try:
-        allowed: Data = client.window()["allowed"]
+        return dict(client.window()["allowed"])
     except TrapdError:
         return {}
-    return allowed
 
 
 def state_sentence(situation: Data) -> str:
     """The state of the trap in plain words."""
-    from trapd.cli.entries import contents_words
-
     contents, moving = situation["contents"], situation["moving"]
+    who, presence = contents_words(contents), contents["presence"]
     if situation["off_pending"]:
         return f"Off was asked for and is not confirmed by {', '.join(situation['off_pending'])}."
     if not any(situation["outputs"].values()):
-        return "Off." if contents["presence"] == "none" else f"Off. In the trap: {contents_words(contents)}."
+        return "Off." if presence == "none" else f"Off. In the trap: {who}."
     held = {
-        "held": f"holding {contents_words(contents)}",
-        "loading": f"loading: {contents_words(contents)}",
+        "held": f"holding {who}",
+        "loading": f"loading: {who}",
         "none": "nothing is in the trap",
-        "unknown": f"what is in the trap is {contents_words(contents)}",
-    }[contents["presence"]]
+        "unknown": f"what is in the trap is {who}",
+    }[presence]
+    if not moving and not _is_driven(situation):
+        return f"RF off, supplies on; {held}."
     if moving:
         return f"Moving {moving['setpoint']}, step {moving['step']} of {moving['steps']}; {held}."
-    return f"On; {held}." if contents["presence"] in ("none", "unknown") else f"{held[0].upper()}{held[1:]}."
+    return f"On; {held}." if presence in ("none", "unknown") else f"{held[0].upper()}{held[1:]}."
 
 
-def show_status(status: Data, trap: Data, allowed: Data) -> None:
-    from trapd.cli.terminal import FAINT, STRONG, say, say_parts
-    from trapd.cli.verdicts import show_species
-
-    situation, verdict = status["situation"], status["verdict"]
+def _show(status: Data, trap: Data, allowed: Data) -> None:
+    situation, verdict, record = status["situation"], status["verdict"], status["record"]
     simulated = " (simulated)" if status["simulated"] else ""
-    say_parts((state_sentence(situation), STRONG), (f"  {status['name']}{simulated}", ""))
+    say((state_sentence(situation), STRONG), f"  {status['name']}{simulated}")
     _show_troubles(situation, verdict)
     say()
-    _show_setpoints(situation, trap, allowed)
-    if verdict is not None and verdict["species"] and situation["outputs"].get("drive.output"):
+    rows = [_setpoint_row(name, limit, situation, allowed) for name, limit in trap["setpoints"].items()]
+    table(("setpoint", "output", ">value", "limits", "allowed now" if allowed else ""), rows)
+    if verdict is not None and verdict["species"] and _is_driven(situation):
         say()
         show_species(verdict["species"])
     say()
-    record = status["record"]
-    say(f"record: entry {record['last_seq']}, head {record['head']}", FAINT)
+    say((f"record: entry {record['last_seq']}, head {record['head']}", FAINT))
 
 
 def _show_troubles(situation: Data, verdict: Data | None) -> None:
-    from trapd.cli.terminal import BAD, CAREFUL, say, say_parts
-    from trapd.cli.verdicts import show_reasons
-
     for name, why in situation["unreachable"].items():
-        say_parts(("unreachable", BAD), (f"  {name}: {why}", ""))
+        say(("unreachable", BAD), f"  {name}: {why}")
     for words in situation["doubt"]:
-        say_parts(("doubt", CAREFUL), (f"  {words}", ""))
+        say(("doubt", CAREFUL), f"  {words}")
     if situation["unwritten"]:
-        say_parts(("record", BAD), (f"  {situation['unwritten']} entries wait to be written", ""))
-    if verdict is None or not any(situation["outputs"].values()):
+        say(("record", BAD), f"  {situation['unwritten']} entries wait to be written")
+    if verdict is None or not _is_driven(situation):
         return
     if not verdict["accepted"]:
-        say("the present state breaks rules; only a way back to safety is accepted", BAD)
+        say(("the present state breaks rules; only a way back to safety is accepted", BAD))
         show_reasons(verdict["reasons"], verdict["values"])
-    if verdict["warnings"]:
-        say(f"not enforced ({len(verdict['warnings'])})", CAREFUL)
-        show_reasons(verdict["warnings"], verdict["values"])
+    show_warnings(verdict)
 
 
-def _show_setpoints(situation: Data, trap: Data, allowed: Data) -> None:
-    from trapd.cli.amounts import value_of
-    from trapd.cli.terminal import table
-
-    columns = ("setpoint", "output", ">value", "limits", "allowed now" if allowed else "")
-    rows = []
-    for name, limit in trap["setpoints"].items():
-        output = "drive.output" if name in (FREQUENCY, AMPLITUDE) else f"{name}.output"
-        on = situation["outputs"].get(output)
-        limits = f"{value_of(name, limit['low'])} to {value_of(name, limit['high'])}"
-        value = value_of(name, situation["values"].get(name))
-        state = "unknown" if on is None else "on" if on else "off"
-        rows.append((name, state, value, limits, _allowed(name, allowed)))
-    table(columns, rows)
-
-
-def _allowed(name: str, allowed: Data) -> str:
-    from trapd.cli.amounts import end_of
-
-    if name not in allowed:
-        return ""
-    intervals = (
-        f"{end_of(name, one['low'], upper=False)} to {end_of(name, one['high'], upper=True)}"
-        for one in allowed[name]["intervals"]
-    )
-    return ", ".join(intervals) or "nowhere"
+def _setpoint_row(name: str, limit: Data, situation: Data, allowed: Data) -> tuple[str, ...]:
+    on = situation["outputs"].get("drive.output" if name in (FREQUENCY, AMPLITUDE) else f"{name}.output")
+    state = "unknown" if on is None else "on" if on else "off"
+    limits = f"{value_of(name, limit['low'])} to {value_of(name, limit['high'])}"
+    reach = ""
+    if name in allowed:
+        reach = ", ".join(" to ".join(ends_of(name, one)) for one in allowed[name]["intervals"]) or "nowhere"
+    return name, state, value_of(name, situation["values"].get(name)), limits, reach

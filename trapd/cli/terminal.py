@@ -13,7 +13,6 @@ import click
 
 if TYPE_CHECKING:
     from rich.console import Console
-    from rich.text import Text
 
 _UNWRAPPED = 10_000
 
@@ -31,18 +30,15 @@ def console() -> Console:
     return Console(highlight=False, markup=False, emoji=False, width=width)
 
 
-def say(text: str = "", style: str = "", *, indent: int = 0) -> None:
-    """One paragraph; wrapped lines keep the indent."""
+def say(*parts: str | tuple[str, str], indent: int = 0) -> None:
+    """One paragraph of pieces, each plain or with its style; wrapped lines keep the indent."""
+    if not is_terminal():
+        click.echo(" " * indent + "".join(part if isinstance(part, str) else part[0] for part in parts))
+        return
+    from rich.padding import Padding
     from rich.text import Text
 
-    _print(Text(text, style=style), indent)
-
-
-def say_parts(*parts: tuple[str, str], indent: int = 0) -> None:
-    """One paragraph of (text, style) pieces."""
-    from rich.text import Text
-
-    _print(Text.assemble(*parts), indent)
+    console().print(Padding(Text.assemble(*parts), (0, 0, 0, indent), expand=False))
 
 
 def table(columns: Sequence[str], rows: Iterable[Sequence[str]], *, indent: int = 0, wrapping: int = 1) -> None:
@@ -64,12 +60,3 @@ def table(columns: Sequence[str], rows: Iterable[Sequence[str]], *, indent: int 
         screen.print(Padding(grid, (0, 0, 0, indent), expand=False))
     for line in drawn.get().splitlines():
         click.echo(line.rstrip())
-
-
-def _print(text: Text, indent: int) -> None:
-    from rich.padding import Padding
-
-    if is_terminal():
-        console().print(Padding(text, (0, 0, 0, indent), expand=False))
-    else:
-        click.echo(" " * indent + text.plain)

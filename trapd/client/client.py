@@ -11,14 +11,13 @@ from urllib.parse import quote
 
 from trapd.address import find
 from trapd.client.connection import Connection
-from trapd.client.following import JsonEntry, Progress, follow, wait_result
+from trapd.client.following import SILENT_S, Json, JsonEntry, Progress, follow, wait_result
 from trapd.errors import BadRequest
 from trapd.setpoint import Values
 
 TOKEN = "TRAPD_TOKEN"
 """Environment variable: the token, needed over TCP only."""
 
-Json = dict[str, Any]
 Time = datetime | str
 """A `datetime` with its offset, or RFC 3339."""
 
@@ -167,7 +166,15 @@ class Client:
 
         Survives a restart of the daemon that takes less than ``patience_s``.
         """
-        return follow(self._connection, after, patience_s)
+        return (entry for entry in follow(self._connection, after, patience_s) if entry is not None)
+
+    def wait(self, request: int, progress: Progress | None = None) -> JsonEntry:
+        """The entry of kind "result" that ends a request, which is named by its entry.
+
+        Raises what it ended with (`Superseded`, `NotConfirmed`, ...), and `RecordUnwritable` when its end cannot be written.
+        """
+        entries = follow(self._connection, request, RECONNECTING_S, SILENT_S)
+        return wait_result(entries, request, progress, self.status)
 
     def verify(self, head: str | None = None) -> Json:
         """Prove the record. ``head``: a digest noted elsewhere that must be in it."""
@@ -200,10 +207,7 @@ class Client:
 
     def _move(self, path: str, body: Json, wait: bool, progress: Progress | None) -> Json:
         accepted = self._post(path, body, within_s=None)  # it waits its turn behind the move in progress
-        if not wait:
-            return accepted
-        request = accepted["entry"]
-        return wait_result(self.follow(request), request, progress)
+        return self.wait(accepted["entry"], progress) if wait else accepted
 
 
 def _given(body: Json) -> Json:

@@ -14,8 +14,10 @@ if TYPE_CHECKING:
     import httpx2
 
 CONNECTING_S = 3.0
-SILENT_S = 45.0
-"""A stream says something every 15 s; one that is silent for so long is dead."""
+
+
+class Silent(DaemonUnreachable):
+    """Connected, and nothing came in time."""
 
 
 class Connection:
@@ -58,13 +60,11 @@ class Connection:
         raise self._error(answer.status_code, answer.content)
 
     @contextmanager
-    def lines(self, path: str, asked: Mapping[str, Any], headers: Mapping[str, str]) -> Iterator[Iterator[str]]:
-        """The lines of an answer that does not end by itself."""
+    def lines(self, path: str, headers: Mapping[str, str], within_s: float) -> Iterator[Iterator[str]]:
+        """The lines of an answer that does not end by itself; `Silent` when none comes ``within_s``."""
         with (
-            self._translated(SILENT_S),
-            self._http.stream(
-                "GET", path, params=_present(asked), headers=dict(headers), timeout=self._patience(SILENT_S)
-            ) as answer,
+            self._translated(within_s),
+            self._http.stream("GET", path, headers=dict(headers), timeout=self._patience(within_s)) as answer,
         ):
             if not answer.is_success:
                 raise self._error(answer.status_code, answer.read())
@@ -84,7 +84,7 @@ class Connection:
         except httpx2.ConnectError as error:
             raise DaemonUnreachable(f"no daemon answers at {self.address} ({error}); nothing was sent") from error
         except httpx2.ReadTimeout as error:
-            raise DaemonUnreachable(
+            raise Silent(
                 f"the daemon at {self.address} did not answer within {within_s:g} s; what it did is in its record"
             ) from error
         except (httpx2.HTTPError, httpx2.InvalidURL) as error:

@@ -16,7 +16,7 @@ from trapd.controller.activity import Activity
 from trapd.controller.desk import RETRY_S, Desk
 from trapd.controller.drafts import DAEMON, unregistered_drafts
 from trapd.controller.kinds import ACTIVITIES
-from trapd.controller.looking import no_longer_known
+from trapd.controller.looking import looking, no_longer_known
 from trapd.controller.mailbox import Mailbox, Urgency
 from trapd.controller.off import retrying_off, switching_off
 from trapd.controller.running import Running
@@ -33,6 +33,9 @@ TICK_S = 0.25
 """How often the thread looks at what is due (retries, the end of loading) when nothing else comes."""
 
 HEARTBEAT_S = 60.0
+
+IDLE_LOOK_S = 10.0
+"""How often the instruments are looked at while nothing moves."""
 
 LAST_TRY_S = 1.0
 
@@ -54,6 +57,8 @@ class Controller:
         self._ending = False
         self._retrying_off = False
         self._offs = 0
+        self._adopted = False
+        self._next_look_ns = 0
         self._next_heartbeat_ns = 0
         self._thread = threading.Thread(target=self._run, name="controller", daemon=True)
 
@@ -105,7 +110,7 @@ class Controller:
     def _leave(self) -> None:
         """Answer whoever still asked, and try a last time to write what could not be written."""
         while (letter := self._mailbox.take(0.0)) is not None:
-            letter.act()
+            self._do(letter.act)
         for future in self._desk.retry_unwritten():
             with suppress(Exception):
                 future.result(LAST_TRY_S)
@@ -126,10 +131,16 @@ class Controller:
             self._do(act)
         if self._desk.situation.contents.presence == "loading" and now_ns >= (self._desk.loading_until_ns or now_ns):
             no_longer_known(self._desk, "loading was not concluded in time")
+            if self._current is not None:  # it was judged by what held while loading
+                self._current.throw(Superseded("loading was not concluded in time; the move stopped where it was"))
         if self._desk.unwritten and self._desk.retry_due_ns <= now_ns:
             self._desk.retry_due_ns = now_ns + int(RETRY_S * 1e9)
             self._desk.retry_unwritten()
-        if now_ns >= self._next_heartbeat_ns and not self._ending:
+        idle = self._current is None and self._offs == 0 and not self._ending and self._adopted
+        if idle and now_ns >= self._next_look_ns:
+            self._next_look_ns = now_ns + int(IDLE_LOOK_S * 1e9)
+            self._spawn(looking(self._desk))
+        if now_ns >= self._next_heartbeat_ns and self._adopted and not self._ending:
             self._next_heartbeat_ns = now_ns + int(HEARTBEAT_S * 1e9)
             self._desk.note(Draft(kind="heartbeat", actor=DAEMON, data={"values": dict(self._desk.situation.values)}))
 
@@ -140,7 +151,12 @@ class Controller:
             _log.exception("the controller goes on after a bug")
 
     def _adopt(self, adoption: Callable[[Desk], Activity], future: Future[dict[str, Any]]) -> None:
-        self._current = running = self._new(adoption(self._desk), future.set_result, future.set_exception)
+        def adopted(found: dict[str, Any]) -> None:
+            self._adopted = True
+            self._next_look_ns = self._desk.clock.monotonic_ns() + int(IDLE_LOOK_S * 1e9)
+            future.set_result(found)
+
+        self._current = running = self._new(adoption(self._desk), adopted, future.set_exception)
         running.resume(None)
 
     def _off(self, ticket: Ticket) -> None:
@@ -189,7 +205,7 @@ class Controller:
             self._fail(ticket, Superseded("whoever asked went away before its turn; nothing was sent"))
 
     def _next(self) -> None:
-        if self._current is None and self._offs == 0 and self._waiting:
+        if self._current is None and self._offs == 0 and self._desk.contents_open == 0 and self._waiting:
             ticket = self._waiting.popleft()
             activity = ACTIVITIES[ticket.request.kind](self._desk, ticket)
             # The slot is taken before the first step: an activity may end at once and ask for the next.
@@ -262,7 +278,7 @@ class Controller:
         self._running.pop(running.number, None)
         if self._current is running:
             self._current = None
-            self._next()
+        self._next()
 
     def post(self, act: Callable[[], None]) -> None:
         """From any thread: something an activity waited for is there."""

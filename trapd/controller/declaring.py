@@ -6,14 +6,14 @@ from concurrent.futures import Future
 from contextlib import suppress
 from dataclasses import asdict, replace
 
-from trapd.controller.activity import Activity
+from trapd.controller.activity import Activity, Part
 from trapd.controller.desk import Desk
 from trapd.controller.drafts import contents_draft, request_draft, verdict_draft
-from trapd.controller.looking import look, require_reachable
+from trapd.controller.looking import follow_darkness, look, require_reachable
 from trapd.controller.registering import refusal
 from trapd.controller.ticket import Ticket
 from trapd.errors import BadRequest, Conflict, NotFound, Superseded, TrapdError
-from trapd.record import Entry
+from trapd.record import Draft, Entry
 from trapd.setpoint import Contents
 from trapd.wiring import DRIVE_OUTPUT
 
@@ -36,17 +36,9 @@ def declaring(desk: Desk, ticket: Ticket) -> Activity:
     if accepted:
         drafts.append(contents_draft(contents, request.author, request.why))
     yield from desk.write_what_waits()
-    future = desk.record.append(*drafts)
-    try:
-        entries = yield future
-    except Superseded:
-        # What is on the disk is what counts: it is taken over even though nobody waits for it any more.
-        ticket.registered = True
-        desk.spawn(_taken_over(desk, future, contents if accepted else None), to_the_end=True)
-        raise
+    entries = yield from commit_contents(desk, ticket, drafts, contents if accepted else None)
     if not accepted:
         return refusal(verdict, entries[0].seq)
-    _take_over(desk, contents)
     return {
         "entry": entries[0].seq,
         "accepted": True,
@@ -56,18 +48,32 @@ def declaring(desk: Desk, ticket: Ticket) -> Activity:
     }
 
 
-def _completed(desk: Desk, contents: Contents) -> Contents:
-    """What was not said: who is guarded while loading, and after doubt."""
-    before = desk.situation.contents
-    if contents.presence == "loading":
-        # Of a trap of unknown contents everything in the catalogue may be in it, and stays guarded.
-        unknown = before.presence == "unknown" and not before.ions
-        ions = dict.fromkeys(desk.model.catalogue, 1) if unknown else before.ions
-        expires_us = desk.clock.now_us() + int(desk.config.loading.expires_s * 1e6)
-        return replace(contents, ions=ions, expires_us=expires_us)
-    if contents.presence == "unknown" and not contents.ions:
-        return replace(contents, ions=before.ions)
-    return contents
+def commit_contents(desk: Desk, ticket: Ticket | None, drafts: list[Draft], contents: Contents | None) -> Part:
+    """Write drafts that say what is in the trap, and take it over: what is on the disk is what counts, also when the
+    request is superseded just then. Until that is known no other request begins."""
+    future = desk.record.append(*drafts)
+    try:
+        entries = yield future
+    except Superseded:
+        if ticket is not None:
+            ticket.registered = True
+        desk.contents_open += 1
+        desk.spawn(_taken_over(desk, future, contents), to_the_end=True)
+        raise
+    if contents is not None:
+        _take_over(desk, contents)
+    return entries
+
+
+def _taken_over(desk: Desk, future: Future[tuple[Entry, ...]], contents: Contents | None) -> Activity:
+    try:
+        with suppress(TrapdError):
+            yield future
+            if contents is not None:
+                _take_over(desk, contents)
+    finally:
+        desk.contents_open -= 1
+    return {}
 
 
 def _take_over(desk: Desk, contents: Contents) -> None:
@@ -75,14 +81,22 @@ def _take_over(desk: Desk, contents: Contents) -> None:
     if contents.presence == "loading":
         # Counted on the monotonic clock: a step of the wall clock neither ends nor prolongs a relaxed guard.
         desk.loading_until_ns = desk.clock.monotonic_ns() + int(desk.config.loading.expires_s * 1e9)
+    follow_darkness(desk)
 
 
-def _taken_over(desk: Desk, future: Future[tuple[Entry, ...]], contents: Contents | None) -> Activity:
-    with suppress(TrapdError):
-        yield future
-        if contents is not None:
-            _take_over(desk, contents)
-    return {}
+def _completed(desk: Desk, contents: Contents) -> Contents:
+    """What was not said: who is guarded while loading, and after doubt. Nobody who may be there is dropped."""
+    before = desk.situation.contents
+    present = dict.fromkeys(before.incoming, 1) | dict(before.ions)
+    if contents.presence == "loading":
+        # Of a trap of unknown contents everything in the catalogue may be in it, and stays guarded.
+        unknown = before.presence == "unknown" and not present
+        ions = dict.fromkeys(desk.model.catalogue, 1) if unknown else present
+        expires_us = desk.clock.now_us() + int(desk.config.loading.expires_s * 1e6)
+        return replace(contents, ions=ions, expires_us=expires_us)
+    if contents.presence == "unknown" and not contents.ions:
+        return replace(contents, ions=present)
+    return contents
 
 
 def _checked(desk: Desk, ticket: Ticket) -> Contents:

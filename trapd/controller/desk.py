@@ -10,16 +10,18 @@ from dataclasses import dataclass, field, replace
 from typing import Any, Protocol
 
 from trapd.clock import Clock
+from trapd.config.build import guard_of
 from trapd.config.records import Config
 from trapd.controller.activity import Activity, Part, Pause
 from trapd.controller.situation import Situation
-from trapd.errors import BadRequest, NotFound, RecordFailed
+from trapd.controller.survey import Survey
+from trapd.errors import BadRequest, NotFound, RecordFailed, RecordUnwritable, TrapdError
 from trapd.guard.model import GuardModel
 from trapd.guard.verdict import judge, judge_move
 from trapd.record import Draft, Entry
 from trapd.setpoint import Contents, Ramp, Values, Verdict
 from trapd.wiring import Wiring
-from trapd_drivers.interfaces import Instrument
+from trapd_drivers.interfaces import Instrument, Scale
 from trapd_drivers.worker import Worker
 
 RETRY_S = 1.0
@@ -44,6 +46,8 @@ class Spawn(Protocol):
 class Desk:
     """Owned by the controller's thread; nobody else changes it. ``situation`` may be read from anywhere.
 
+    ``events``: surveys that found something an instrument tells only once, until a look has dealt with them.
+    ``contents_open``: commits under way that say what is in the trap.
     ``sent`` counts the commands handed to instruments: what was read before the last of them is stale. Before
     ``rest_until_ns`` (monotonic) the last step has not settled, and no other setpoint may move.
     """
@@ -60,8 +64,21 @@ class Desk:
     sent: int = 0
     rest_until_ns: int = 0
     loading_until_ns: int | None = None
+    contents_open: int = 0
     unwritten: deque[tuple[Draft, ...]] = field(default_factory=deque)
     retry_due_ns: int = 0
+    last_words: list[str] = field(default_factory=list)
+    scales: Mapping[str, Scale] = field(init=False)
+    events: deque[Survey] = field(default_factory=deque)
+
+    def __post_init__(self) -> None:
+        self.scales = self.wiring.scales
+
+    def refit(self) -> None:
+        """An instrument that was absent at the start has told its limits meanwhile."""
+        scales = self.wiring.scales
+        if scales != self.scales:
+            self.scales, self.model = scales, guard_of(self.config, scales)
 
     def change(self, **changes: Any) -> None:
         """Replace the situation by one that differs in these fields."""
@@ -89,19 +106,35 @@ class Desk:
         return self.judges.submit(judge, self.model, contents, dict(values))
 
     def note(self, *drafts: Draft) -> Future[tuple[Entry, ...]]:
-        """Append what has happened already. If it cannot be written now it is kept and tried again, flagged as such."""
+        """Append what has happened already. If it cannot be written now it is kept and tried again, flagged as such; and
+        what comes after something that waits, waits behind it."""
         happened_us = self.clock.now_us()
-        future = self.record.append(*drafts)
-        future.add_done_callback(lambda done: self._keep(done, drafts, happened_us))
-        return future
+        if not self.unwritten:
+            return self._write(drafts, happened_us)
+        behind: Future[tuple[Entry, ...]] = Future()
+        behind.set_exception(RecordUnwritable("waits behind what could not be written before"))
+        self._keep(behind, drafts, happened_us)
+        return behind
 
     def retry_unwritten(self) -> list[Future[tuple[Entry, ...]]]:
         """Try to append again what could not be written, oldest first."""
-        return [self.note(*self.unwritten.popleft()) for _ in range(len(self.unwritten))]
+        waiting = [self.unwritten.popleft() for _ in range(len(self.unwritten))]
+        return [self._write(drafts, self.clock.now_us()) for drafts in waiting]
 
     def write_what_waits(self) -> Part:
         """What happened earlier stands in the record before anything new does; else nothing new begins."""
-        yield from self.retry_unwritten()
+        for future in self.retry_unwritten():
+            try:
+                yield future
+            except RecordFailed:
+                raise
+            except TrapdError:  # it was dropped, and logged; that is no reason to refuse this request
+                continue
+
+    def _write(self, drafts: Sequence[Draft], happened_us: int) -> Future[tuple[Entry, ...]]:
+        future = self.record.append(*drafts)
+        future.add_done_callback(lambda done: self._keep(done, drafts, happened_us))
+        return future
 
     def point(self, name: str | None) -> Mapping[str, float]:
         """A named operating point; the first of the file when no name is given."""
@@ -118,6 +151,8 @@ class Desk:
         # Runs on the writer's thread, while the controller's may take from the other end.
         error = done.exception()
         if isinstance(error, RecordFailed):
+            if not self.unwritten:
+                _log.error("the record cannot be written: %s; what happens is kept and written later", error)
             late = {"written_late": True, "happened_us": happened_us}
             self.unwritten.append(tuple(replace(draft, data={**late, **draft.data}) for draft in drafts))
         elif error is not None:

@@ -8,7 +8,7 @@ from concurrent.futures import Future
 from trapd.controller.activity import Activity, Part, Pause, Within
 from trapd.controller.desk import Desk
 from trapd.controller.drafts import DAEMON, contents_draft
-from trapd.controller.survey import Survey, differences, survey_job, values_found
+from trapd.controller.survey import Survey, differences, reports, survey_job, values_found
 from trapd.errors import InstrumentUnreachable
 from trapd.record import Draft
 from trapd.setpoint import AMPLITUDE, FREQUENCY, Contents
@@ -23,35 +23,44 @@ DARK_S = 1.0
 """How long RF must be verified off before the trap counts as empty."""
 
 
-def look(desk: Desk) -> Part:
+def look(desk: Desk, *, added: bool = False) -> Part:
     """Survey every instrument, take what was found for the present state, record what differs.
+
+    With ``added`` what is in doubt already stays in doubt: nobody has asked for anything since.
 
     Returns the surveys. Instruments that do not answer keep their last known values and are named in the situation. If a
     command was handed to any instrument meanwhile, what was read is stale and nothing is taken from it.
     """
     sent = desk.sent
     jobs = {name: worker.submit(survey_job(desk.wiring, name)) for name, worker in desk.workers.items()}
+    for job in jobs.values():
+        job.add_done_callback(lambda done: _keep_events(desk, done))
     surveys: list[Survey] = yield from _gather(desk, jobs)
+    desk.refit()
     before = desk.situation
     words = differences(desk.wiring, desk.model, surveys, before.values, before.outputs)
+    events = [desk.events.popleft() for _ in range(len(desk.events))]
+    words += [one for found in events if found not in surveys for one in reports(found)]
     if desk.sent == sent:
         outputs = dict(before.outputs)
         for found in surveys:
             outputs.update(found.outputs)
-        desk.change(values=_merged(desk, surveys), outputs=outputs, doubt=tuple(words))
-    elif not any(found.power_on or found.tripped or found.errors for found in surveys):
+        kept = desk.situation.doubt if added else ()
+        desk.change(values=_merged(desk, surveys), outputs=outputs, doubt=tuple(dict.fromkeys((*kept, *words))))
+    elif not events:
         return surveys
-    if words:
+    if words and words != desk.last_words:
         desk.note(_found_draft(desk, surveys, words))
-    if any(found.power_on for found in surveys):
+    desk.last_words = words
+    if any(found.power_on for found in events):
         no_longer_known(desk, "an instrument was switched off and on")
     follow_darkness(desk)
     return surveys
 
 
 def looking(desk: Desk) -> Activity:
-    """A look of its own, after a move that failed."""
-    yield from look(desk)
+    """A look of its own: after a move that failed, and now and then while nothing moves."""
+    yield from look(desk, added=True)
     return {}
 
 
@@ -106,6 +115,14 @@ def verified_dark(desk: Desk) -> Part:
         return (yield Within(desk.workers[desk.wiring.drive].submit(job), ANSWER_S))
     except (DriverError, TimeoutError):
         return False
+
+
+def _keep_events(desk: Desk, done: Future[Survey]) -> None:
+    """On the instrument's thread: what it tells only once is kept even when nobody waits for the survey any more."""
+    if not done.cancelled() and done.exception() is None:
+        found = done.result()
+        if found.power_on or found.tripped or found.errors:
+            desk.events.append(found)
 
 
 def _gather(desk: Desk, jobs: dict[str, Future[Survey]]) -> Part:

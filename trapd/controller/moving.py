@@ -11,6 +11,7 @@ from trapd.controller.travel import expand, run
 from trapd.errors import BadRequest, Conflict
 from trapd.guard.limits import realised
 from trapd.setpoint import Request
+from trapd.wiring import DRIVE_OUTPUT
 
 
 def changing(desk: Desk, ticket: Ticket) -> Activity:
@@ -32,8 +33,9 @@ def target_of(desk: Desk, request: Request) -> dict[str, float]:
     situation = desk.situation
     off = [name for name, on in situation.outputs.items() if not on]
     if off:
+        first = "`trapd on`" if not situation.outputs[DRIVE_OUTPUT] else "`trapd off`, and then `trapd on`,"
         raise Conflict(
-            f"{request.kind}: {', '.join(off)} {'is' if len(off) == 1 else 'are'} off; `trapd on` comes first; "
+            f"{request.kind}: {', '.join(off)} {'is' if len(off) == 1 else 'are'} off; {first} comes first; "
             "nothing was sent"
         )
     if request.kind == "back":

@@ -2,18 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import logging
+from collections.abc import Callable, Mapping
 from concurrent.futures import Future
+from dataclasses import asdict
 from typing import Any
 
 from trapd.controller.activity import Activity, Part, Within
 from trapd.controller.desk import Desk
 from trapd.controller.drafts import DAEMON
-from trapd.controller.looking import follow_darkness, no_longer_known
+from trapd.controller.looking import follow_darkness, looking, no_longer_known
 from trapd.controller.ticket import Ticket
-from trapd.errors import RecordFailed
-from trapd.record import Draft
-from trapd.setpoint import AMPLITUDE
+from trapd.errors import TrapdError
+from trapd.record import Draft, SameCommit
+from trapd.setpoint import AMPLITUDE, Outcome
 from trapd.wiring import DRIVE_OUTPUT, output_of
 from trapd_drivers.interfaces import DcSupply, Instrument, RfSource
 
@@ -26,6 +28,8 @@ OFF_S = 3.0
 RECORD_S = 0.5
 """How long the answer waits for its entry number; a dead disk does not hold it up."""
 
+_log = logging.getLogger(__name__)
+
 Confirmed = dict[str, bool]
 """Output name to whether it is on still."""
 
@@ -35,17 +39,18 @@ def switching_off(desk: Desk, ticket: Ticket) -> Activity:
     request = ticket.request
     began_ns = desk.clock.monotonic_ns()
     report = yield from _off_everywhere(desk, began_ns)
-    data = {"why": request.why, "instruments": report, "began_monotonic_ns": began_ns}
-    note = desk.note(Draft(kind="off", actor=request.author, data=data))
+    pending = tuple(name for name, found in report.items() if not found["off"])
+    desk.change(off_pending=pending)
+    for name in pending:
+        _log.error("off is not confirmed by %s: %s; it is tried again", name, report[name]["error"])
+    note = desk.note(*_drafts(desk, request.author, request.why, report))
+    no_longer_known(desk, "everything was switched off")
+    follow_darkness(desk)
     entry = None
     try:
         entry = (yield Within(note, RECORD_S))[0].seq
-    except (RecordFailed, TimeoutError):  # it is kept in desk.unwritten and shown there
+    except (TrapdError, TimeoutError):  # it is kept in desk.unwritten and shown there
         entry = None
-    no_longer_known(desk, "everything was switched off")
-    pending = tuple(name for name, found in report.items() if not found["off"])
-    desk.change(off_pending=pending)
-    follow_darkness(desk)
     return {"entry": entry, "recorded": entry is not None, "off": not pending, "instruments": report}
 
 
@@ -59,9 +64,10 @@ def retrying_off(desk: Desk) -> Activity:
         report[name] = yield from _answer(desk, job, OFF_S, began_ns)
     done = [name for name, found in report.items() if found["off"]]
     if done:
-        desk.note(Draft(kind="off", actor=DAEMON, data={"why": "tried again", "instruments": report}))
-        desk.change(off_pending=tuple(name for name in names if name not in done))
+        desk.note(*_drafts(desk, DAEMON, "off, tried again", report))
+        desk.change(off_pending=tuple(name for name in desk.situation.off_pending if name not in done))
         follow_darkness(desk)
+        desk.spawn(looking(desk))
     return {}
 
 
@@ -74,17 +80,48 @@ def _off_everywhere(desk: Desk, began_ns: int) -> Part:
     supplies = [name for name in desk.workers if name != drive]
     jobs = {name: desk.submit(name, _off_job(desk, name), urgent=True) for name in supplies}
     for name, job in jobs.items():
-        report[name] = yield from _answer(desk, job, OFF_S, began_ns)
-    if not rf.done() or not report[drive]["off"]:
-        rest_s = max(0.0, OFF_S - (desk.clock.monotonic_ns() - began_ns) / 1e9)
-        report[drive] = yield from _answer(desk, rf, rest_s, began_ns)
+        report[name] = yield from _answer(desk, job, _rest_s(desk, began_ns), began_ns)
+    if not report[drive]["off"]:
+        report[drive] = yield from _answer(desk, rf, _rest_s(desk, began_ns), began_ns)
     return report
 
 
-def _off_job(desk: Desk, name: str) -> Callable[[Instrument], Confirmed]:
+def _rest_s(desk: Desk, began_ns: int) -> float:
+    """What is left of `OFF_S`, for all instruments together."""
+    return max(0.0, OFF_S - (desk.clock.monotonic_ns() - began_ns) / 1e9)
+
+
+def _drafts(desk: Desk, author: str, why: str, report: Mapping[str, Any]) -> list[Draft]:
+    """The entry, and for each output what was commanded and what came of it, as for any other command."""
+    drafts = [Draft(kind="off", actor=author, data={"why": why, "instruments": dict(report)})]
+    for setpoint in (AMPLITUDE, *desk.wiring.electrodes):
+        intent = desk.wiring.output(setpoint, False).intent
+        if intent.instrument not in report:
+            continue
+        found = report[intent.instrument]
+        outcome = Outcome(
+            state="confirmed" if found["off"] else "not confirmed",
+            sent_us=found["sent_us"],
+            readback=0.0 if found["off"] else None,
+            difference=0.0 if found["off"] else None,
+            error=found["error"],
+        )
+        origin = {"request": SameCommit(0), "who": author, "why": why}
+        drafts.append(Draft(kind="intent", actor=author, data={**asdict(intent), **origin}))
+        intent_entry = SameCommit(len(drafts) - 1)
+        drafts.append(Draft(kind="outcome", actor=author, data={**asdict(outcome), "intent": intent_entry}))
+    return drafts
+
+
+def _off_job(desk: Desk, name: str) -> Callable[[Instrument], tuple[Confirmed, int]]:
+    """Switches off and asks; with the monotonic time at which that was answered."""
     channels = {setpoint: channel for setpoint, (owner, channel) in desk.wiring.electrodes.items() if owner == name}
 
-    def job(instrument: Instrument) -> Confirmed:
+    def job(instrument: Instrument) -> tuple[Confirmed, int]:
+        confirmed = switch_off(instrument)
+        return confirmed, desk.clock.monotonic_ns()
+
+    def switch_off(instrument: Instrument) -> Confirmed:
         if isinstance(instrument, RfSource):
             instrument.set_output(False)
             return {DRIVE_OUTPUT: instrument.read_output()}
@@ -102,22 +139,24 @@ def _off_job(desk: Desk, name: str) -> Callable[[Instrument], Confirmed]:
     return job
 
 
-def _answer(desk: Desk, job: Future[Confirmed], seconds: float, began_ns: int) -> Part:
-    """What one instrument said: ``off``, after how long, and why not."""
+def _answer(desk: Desk, job: Future[tuple[Confirmed, int]], seconds: float, began_ns: int) -> Part:
+    """What one instrument said: ``off``, after how long, when it was asked, and why not."""
+    sent_us = desk.clock.now_us()
+    still_on: list[str] = []
+    error: str | None = None
+    at_ns: int | None = None
     try:
-        confirmed: Confirmed = yield Within(job, seconds)
+        confirmed, at_ns = yield Within(job, seconds)
     except TimeoutError:
-        return {"off": False, "after_s": _since(desk, began_ns), "error": f"no answer in {seconds:g} s"}
-    except Exception as error:  # whatever it is, the other instruments go off and this one is tried again
-        return {"off": False, "after_s": _since(desk, began_ns), "error": str(error) or type(error).__name__}
-    _take(desk, confirmed)
-    still_on = [name for name, on in confirmed.items() if on]
-    words = f"{', '.join(still_on)} still on" if still_on else None
-    return {"off": not still_on, "after_s": _since(desk, began_ns), "error": words}
-
-
-def _since(desk: Desk, began_ns: int) -> float:
-    return round((desk.clock.monotonic_ns() - began_ns) / 1e9, 4)
+        error = f"no answer in {seconds:.2g} s"
+    except Exception as failure:  # whatever it is, the other instruments go off and this one is tried again
+        error = str(failure) or type(failure).__name__
+    else:
+        _take(desk, confirmed)
+        still_on = [name for name, on in confirmed.items() if on]
+        error = f"{', '.join(still_on)} still on" if still_on else None
+    after_s = round(((at_ns or desk.clock.monotonic_ns()) - began_ns) / 1e9, 4)
+    return {"off": error is None, "after_s": after_s, "sent_us": sent_us, "error": error}
 
 
 def _take(desk: Desk, confirmed: Confirmed) -> None:

@@ -9,7 +9,7 @@ from typing import Any
 
 from trapd.controller.activity import Activity, Part
 from trapd.controller.desk import Desk
-from trapd.controller.drafts import ramp_draft, request_draft, result_draft, verdict_draft
+from trapd.controller.drafts import ramp_draft, request_draft, result_draft, unregistered_drafts, verdict_draft
 from trapd.controller.looking import looking
 from trapd.controller.ticket import Ticket
 from trapd.errors import Bug, Superseded, TrapdError
@@ -79,9 +79,12 @@ def commit(desk: Desk, ticket: Ticket, drafts: list[Draft]) -> Part:
 
 
 def _never_begun(desk: Desk, ticket: Ticket, future: Future[tuple[Entry, ...]], error: TrapdError) -> Activity:
-    with suppress(TrapdError):
+    here = desk.situation.values
+    try:
         entries = yield future
-        here = desk.situation.values
+    except TrapdError:
+        desk.note(*unregistered_drafts(ticket.request, here, error))
+    else:
         desk.note(result_draft(ticket.request.author, entries[0].seq, here, here, returns=False, error=error))
     return {}
 
@@ -114,7 +117,7 @@ def conclude(desk: Desk, origin: Origin, part: Part, *, returns: bool = True) ->
     finally:
         desk.change(moving=None)
     if not returns:
-        desk.change(previous=None)
+        desk.change(previous=None, doubt=())  # everything has been commanded anew
     elif dict(desk.situation.values) != dict(start):
         desk.change(previous=dict(start))
     with suppress(TrapdError):  # done is done; if that could not be written it is kept and written later

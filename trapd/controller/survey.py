@@ -96,10 +96,7 @@ def differences(
     """
     words = []
     for found in surveys:
-        if found.power_on:
-            words.append(f"{found.instrument} was switched on since the last look")
-        words += [f"{found.instrument} reports {code}, {text}" for code, text in found.errors]
-        words += [f"{found.instrument} has tripped its protection{_channel(channel)}" for channel in found.tripped]
+        words += reports(found)
         for name, on in found.outputs.items():
             if name in outputs and outputs[name] != on:
                 words.append(f"{name} is {_on(on)}, last commanded {_on(outputs[name])}")
@@ -112,6 +109,13 @@ def differences(
                 unit = unit_of(setpoint)
                 words.append(f"{setpoint} reads {value:.8g} {unit}, last commanded {expected[setpoint]:.8g} {unit}")
     return words
+
+
+def reports(found: Survey) -> list[str]:
+    """In words, what the instrument told of itself."""
+    words = [f"{found.instrument} was switched on since the last look"] if found.power_on else []
+    words += [f"{found.instrument} reports {code}, {text}" for code, text in found.errors]
+    return words + [f"{found.instrument} has tripped its protection{_channel(channel)}" for channel in found.tripped]
 
 
 def _on(on: bool) -> str:

@@ -6,6 +6,7 @@ from collections.abc import Iterable
 from itertools import chain
 
 from trapd.controller.activity import Activity, Part, Pause
+from trapd.controller.declaring import commit_contents
 from trapd.controller.desk import Desk
 from trapd.controller.drafts import contents_draft
 from trapd.controller.looking import DARK_S, look, require_reachable, verified_dark
@@ -91,8 +92,7 @@ def _letting_go(desk: Desk, origin: Origin, again: Iterable[Command], steps: int
         raise NotConfirmed(
             f"empty: {desk.wiring.drive} did not confirm RF off after {DARK_S:g} s; the contents stay as they were"
         )
-    yield desk.record.append(contents_draft(NOBODY, origin.author, origin.why))
-    desk.change(contents=NOBODY)
+    yield from commit_contents(desk, None, [contents_draft(NOBODY, origin.author, origin.why)], NOBODY)
     yield from run(desk, origin, again, steps)
 
 

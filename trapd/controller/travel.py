@@ -10,6 +10,7 @@ from trapd.controller.activity import Activity, Part, Pause
 from trapd.controller.carry_out import Carried, carry_out
 from trapd.controller.desk import Desk
 from trapd.controller.drafts import outcome_draft
+from trapd.controller.looking import follow_darkness, looking
 from trapd.controller.registering import Origin
 from trapd.controller.situation import Moving
 from trapd.errors import InstrumentUnreachable, NotConfirmed, RecordFailed, Superseded, TrapdError
@@ -128,6 +129,9 @@ def _late_outcome(
         return {}
     if desk.sent == sent:  # else something was sent after it, `off` perhaps
         _take(desk, command, carried)
+    if carried.outcome.state not in ARRIVED:
+        desk.change(doubt=(*desk.situation.doubt, f"{command.intent.setpoint}: {carried.outcome.error}"))
+        desk.spawn(looking(desk))
     desk.note(outcome_draft(origin.author, intent, carried.outcome))
     return {}
 
@@ -144,6 +148,7 @@ def _take(desk: Desk, command: Command, carried: Carried) -> None:
             silent = AMPLITUDE if intent.setpoint == DRIVE_OUTPUT else intent.setpoint.removesuffix(".output")
             values = {**values, silent: 0.0}
         desk.change(outputs={**situation.outputs, intent.setpoint: bool(intent.level)}, values=values)
+        follow_darkness(desk)
         return
     # A value told to an output that is off stands nowhere yet; the drive frequency is what it is.
     live = intent.setpoint == FREQUENCY or situation.outputs.get(output_of(intent.setpoint), False)

@@ -16,12 +16,13 @@ from trapd.setpoint import AMPLITUDE, FREQUENCY, Reason, Step, Values, unit_of
 
 
 def leg_reason(
-    model: GuardModel, who: Watched, values: Values, steps: list[Step], residue: Sequence[str]
+    model: GuardModel, who: Watched, values: Values, steps: list[Step], residue: Sequence[str], *, clean_end: bool
 ) -> Reason | None:
-    """Why this stretch is not allowed; None when it is. ``residue``: the setpoints that moved before it."""
+    """Why this stretch is not allowed; None when it is. ``residue``: the setpoints that moved before it; ``clean_end``: the
+    state at its end is known to break no rule."""
     name, end = steps[-1].setpoint, steps[-1].value
     reason = hazard_reason(model, who, values, steps) or stretch_reason(model, who.enforced, values, steps, residue)
-    if reason is not None or not who.enforced:
+    if reason is not None or clean_end or name == AMPLITUDE:  # whose allowed values are judged over the whole band
         return reason
     # With both ends judged over the whole amplitude band, and the stretch at both ends of the band, the border of the box
     # (stretch x band) is proved.
@@ -99,11 +100,16 @@ def _amplitude_on_the_way(model: GuardModel, values: Values, low: float, high: f
 
 
 def _boundary(model: GuardModel, values: Values, steps: list[Step]) -> Reason | None:
+    """A frequency step changes the level as well: either may cross a boundary of its own."""
     name = steps[-1].setpoint
-    told = AMPLITUDE if name == FREQUENCY else name
-    boundaries = model.limits[told].boundaries
-    if not boundaries:
-        return None
+    for told in (FREQUENCY, AMPLITUDE) if name == FREQUENCY else (name,):
+        if model.limits[told].boundaries and (reason := _crossing(model, values, steps, told)) is not None:
+            return reason
+    return None
+
+
+def _crossing(model: GuardModel, values: Values, steps: list[Step], told: str) -> Reason | None:
+    name = steps[-1].setpoint
 
     def instrument_value(state: Values) -> float:
         return level_of(model, state) if told == AMPLITUDE else state[told]
@@ -111,7 +117,7 @@ def _boundary(model: GuardModel, values: Values, steps: list[Step]) -> Reason | 
     before = instrument_value(values)
     for step in steps:
         after = instrument_value({**values, name: step.value})
-        for boundary in boundaries:
+        for boundary in model.limits[told].boundaries:
             if (before < boundary) != (after < boundary):
                 return Reason(
                     rule=rules.BOUNDARY,
@@ -120,7 +126,7 @@ def _boundary(model: GuardModel, values: Values, steps: list[Step]) -> Reason | 
                     found=step.value,
                     bound=boundary,
                     message=f"{name} = {show(step.value, name)} crosses a range boundary of its instrument at "
-                    f"{boundary:.6g} V, where the output drops out; not with ions in the trap",
+                    f"{show(boundary, told)}, where the output drops out; not with ions in the trap",
                 )
         before = after
     return None

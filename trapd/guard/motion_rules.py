@@ -17,6 +17,9 @@ from trapd.setpoint import AMPLITUDE, FREQUENCY, Motion, Reason, Values, unit_of
 _ROUNDING = 1e-12
 """Relative; edges are known that well, and a value on an edge is neither offered nor refused for its last digits."""
 
+_GRID = 1e-9
+"""Of a programmable step: a limit this close to one is on it."""
+
 
 def motion_reasons(
     model: GuardModel, species: Iterable[Species], values: Values, changed: Sequence[str] = ()
@@ -28,8 +31,7 @@ def motion_reasons(
         reasons += _window_reasons(model, everybody, one, values, changed)
     for one in everybody:
         if not any(r.species == one.name and r.rule == rules.STABILITY for r in reasons):
-            reasons += _secular_reasons(model, everybody, one, values, changed)
-            reasons += _depth_reasons(model, everybody, one, values, changed)
+            reasons += _rule_reasons(model, everybody, one, values, changed)
     return reasons
 
 
@@ -41,9 +43,12 @@ def nearest_allowed(model: GuardModel, species: Sequence[Species], values: Value
     quantum = resolution(model, values, setpoint)
     found = []
     for interval in allowed_intervals(model, species, values, setpoint):
-        low, high = interval.low + _ROUNDING * abs(interval.low), interval.high - _ROUNDING * abs(interval.high)
+        low, high = interval.low, interval.high
         if quantum > 0:
-            low, high = math.ceil(low / quantum) * quantum, math.floor(high / quantum) * quantum
+            low, high = math.ceil(low / quantum - _GRID) * quantum, math.floor(high / quantum + _GRID) * quantum
+        else:  # an edge of the motion is lost on the edge itself; a limit is not
+            low += _ROUNDING * abs(low) * (interval.low_by.kind != "limit")
+            high -= _ROUNDING * abs(high) * (interval.high_by.kind != "limit")
         if low <= high:
             found.append(min(max(values[setpoint], low), high))
     nearest = min(found, key=lambda value: abs(value - values[setpoint]), default=None)
@@ -97,7 +102,8 @@ def _covers(intervals: Sequence[Interval], low: float, high: float) -> bool:
 def _unstable(
     model: GuardModel, everybody: list[Species], one: Species, values: Values, changed: Sequence[str]
 ) -> Reason:
-    blamed, edge, end = _nearest_edge(model, one, values, changed or list(values))
+    names = list(changed) or [name for name in values if name != FREQUENCY or not model.frequency_fixed]
+    blamed, edge, end = _nearest_edge(model, one, values, names)
     what = "outside the first stability region"
     if edge is None:
         text = f"{one.name} is {what}, and no {blamed} within its limits would change that"
@@ -180,36 +186,43 @@ def _names(end: Edge | None) -> str:
     return f" ({end.edge} of {end.mode})" if end is not None and end.edge is not None else ""
 
 
-def _secular_reasons(
+def _rule_reasons(
     model: GuardModel, everybody: list[Species], one: Species, values: Values, changed: Sequence[str]
 ) -> list[Reason]:
-    bound = model.min_secular_frequency_hz
-    if bound is None:
+    """The file's own rules, at both ends of the band in which the amplitude may really stand."""
+    least_hz, least_ev = model.min_secular_frequency_hz, model.min_depth_ev
+    if least_hz is None and least_ev is None:
         return []
-    frequency, mode = min(_slowest(m) for m in _at_both_ends(model, one, values))
-    if frequency >= bound * (1 - _ROUNDING):
-        return []
-    blamed = _easiest(model, everybody, values, changed)
-    return [
-        Reason(
-            rule=rules.MIN_SECULAR_FREQUENCY,
+
+    def broken(rule: str, unit: str, value: float, bound: float, mode: str | None, message: str) -> Reason:
+        blamed = _easiest(model, everybody, values, changed)
+        return Reason(
+            rule=rule,
             quantity=blamed,
-            unit="Hz",
-            found=frequency,
+            unit=unit,
+            found=value,
             bound=bound,
             species=one.name,
             mode=mode,
             nearest=nearest_allowed(model, everybody, values, blamed),
-            message=f"secular frequency of {one.name} along {mode} is {frequency / 1e3:.6g} kHz, "
-            f"min_secular_frequency is {bound / 1e3:.6g} kHz",
+            message=message,
         )
-    ]
 
-
-def _at_both_ends(model: GuardModel, one: Species, values: Values) -> list[Motion]:
-    """The motion at both ends of the band in which the amplitude may really stand."""
     ends = sorted(set(amplitude_band(model, values)))
-    return motions(model.trap, one, [point_of({**values, AMPLITUDE: end}) for end in ends])
+    found = motions(model.trap, one, [point_of({**values, AMPLITUDE: end}) for end in ends])
+    reasons = []
+    if least_hz is not None and (slowest := min(map(_slowest, found)))[0] < least_hz * (1 - _ROUNDING):
+        frequency, mode = slowest
+        text = (
+            f"secular frequency of {one.name} along {mode} is {frequency / 1e3:.6g} kHz, "
+            f"min_secular_frequency is {least_hz / 1e3:.6g} kHz"
+        )
+        reasons.append(broken(rules.MIN_SECULAR_FREQUENCY, "Hz", frequency, least_hz, mode, text))
+    depth = min((m.depth_ev for m in found if m.depth_ev is not None), default=math.inf)
+    if least_ev is not None and depth < least_ev * (1 - _ROUNDING):
+        text = f"depth for {one.name} is {depth:.4g} eV (pseudopotential), min_depth is {least_ev:.4g} eV"
+        reasons.append(broken(rules.MIN_DEPTH, "eV", depth, least_ev, None, text))
+    return reasons
 
 
 def _easiest(model: GuardModel, everybody: list[Species], values: Values, changed: Sequence[str]) -> str:
@@ -227,27 +240,3 @@ def _easiest(model: GuardModel, everybody: list[Species], values: Values, change
 def _slowest(found: Motion) -> tuple[float, str]:
     assert found.secular_frequencies_hz is not None  # a state outside the first region never comes here
     return min(zip(found.secular_frequencies_hz, "xyz", strict=True))
-
-
-def _depth_reasons(
-    model: GuardModel, everybody: list[Species], one: Species, values: Values, changed: Sequence[str]
-) -> list[Reason]:
-    bound = model.min_depth_ev
-    if bound is None or model.trap.escape is None:
-        return []
-    found = min(m.depth_ev or 0.0 for m in _at_both_ends(model, one, values))
-    if found >= bound * (1 - _ROUNDING):
-        return []
-    blamed = _easiest(model, everybody, values, changed)
-    return [
-        Reason(
-            rule=rules.MIN_DEPTH,
-            quantity=blamed,
-            unit="eV",
-            found=found,
-            bound=bound,
-            species=one.name,
-            nearest=nearest_allowed(model, everybody, values, blamed),
-            message=f"depth for {one.name} is {found:.4g} eV (pseudopotential), min_depth is {bound:.4g} eV",
-        )
-    ]

@@ -11,7 +11,7 @@ from trapd.guard.leg import hazard_reason, leg_reason, stretch_reason
 from trapd.guard.limits import show, step_reasons
 from trapd.guard.model import GuardModel
 from trapd.guard.ramp import leg_steps
-from trapd.guard.recovering import severity, worsens
+from trapd.guard.recovering import Severity, severity, worsens
 from trapd.setpoint import FREQUENCY, Ramp, Reason, Step, Values, unit_of
 
 MOST_LEGS = 400
@@ -29,7 +29,7 @@ class Plan:
 
 @dataclass
 class _Search:
-    """Depth first over orders; what failed once from the same place is not tried again."""
+    """Depth first over orders to a target that is allowed; what failed once from the same place is not tried again."""
 
     model: GuardModel
     who: Watched
@@ -46,7 +46,7 @@ class _Search:
                 continue
             self.legs += 1
             steps = leg_steps(self.model, values, name, self.target[name])
-            reason = leg_reason(self.model, self.who, values, steps, residue=moved)
+            reason = leg_reason(self.model, self.who, values, steps, residue=moved, clean_end=len(rest) == 1)
             if reason is None:
                 there = {**values, name: self.target[name]}
                 onward = self.order(there, tuple(other for other in rest if other != name), (*moved, name))
@@ -100,6 +100,10 @@ def _fixed_frequency(model: GuardModel, who: Watched, present: Values, target: V
 
 def _recover(model: GuardModel, who: Watched, present: Values, target: Values, moved: tuple[str, ...]) -> Plan:
     """Whole moves in the order that worsens nothing, each judged at every step."""
+    broken = severity(model, who.enforced, present)
+    worse = worsens(broken, severity(model, who.enforced, target))
+    if worse is not None:  # and before a way to a senseless target is cut into steps
+        return Plan(ramp=None, reasons=(_worse_reason(moved[0], target[moved[0]], worse, broken),))
     values, rest, steps = dict(present), list(moved), list[Step]()
     reasons = list[Reason]()
     while rest:
@@ -120,7 +124,7 @@ def _recover(model: GuardModel, who: Watched, present: Values, target: Values, m
 def _recovering_leg_reason(model: GuardModel, who: Watched, values: Values, steps: list[Step]) -> Reason | None:
     before = severity(model, who.enforced, values)
     if not before:
-        return leg_reason(model, who, values, steps, residue=())
+        return leg_reason(model, who, values, steps, residue=(), clean_end=False)
     # A species that is well is proved as on any other way; the broken rules are followed in half steps.
     well = [one for one in who.enforced if not any(one.name in rule for rule in before)]
     reason = hazard_reason(model, who, values, steps) or stretch_reason(model, well, values, steps, (), limits=False)
@@ -132,17 +136,21 @@ def _recovering_leg_reason(model: GuardModel, who: Watched, values: Values, step
         after = severity(model, who.enforced, {**values, name: value}, stretch)
         worse = worsens(before, after)
         if worse is not None:
-            return Reason(
-                rule=rules.PATH,
-                quantity=name,
-                unit=unit_of(name),
-                found=value,
-                bound=None,
-                message=f"{name} = {show(value, name)} on the way makes it worse: {', '.join(worse)}; the present state "
-                f"already breaks {', '.join(sorted({key[0] for key in before}))}",
-            )
+            return _worse_reason(name, value, worse, before)
         before, last = after, value
     return None
+
+
+def _worse_reason(name: str, value: float, worse: tuple[str, ...], broken: Severity) -> Reason:
+    return Reason(
+        rule=rules.PATH,
+        quantity=name,
+        unit=unit_of(name),
+        found=value,
+        bound=None,
+        message=f"{name} = {show(value, name)} on the way makes it worse: {', '.join(worse)}; the present state "
+        f"already breaks {', '.join(sorted({rule[0] for rule in broken}))}",
+    )
 
 
 def half_steps(start: float, steps: list[Step]) -> Iterator[float]:

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 from trapd.guard.allowed import point_of
 from trapd.guard.contents import Watched, watched
 from trapd.guard.limits import displacement, limit_reasons
 from trapd.guard.model import GuardModel
-from trapd.guard.motion_rules import motion_reasons
+from trapd.guard.motion_rules import motion_reasons, nearest_allowed
 from trapd.guard.path import Plan, plan_path
 from trapd.guard.rules import STABILITY
 from trapd.physics.floquet import motion
@@ -60,6 +61,8 @@ def state_reasons(
     reasons = limit_reasons(model, values)
     if values[FREQUENCY] <= displacement(model, values, FREQUENCY):
         return reasons, []  # no drive to speak of: a limit is broken, and there is no motion to compute
+    if who.enforced:  # a limit's nearest value must suit the ions as well
+        reasons = [replace(r, nearest=nearest_allowed(model, who.enforced, values, r.quantity)) for r in reasons]
     reasons += motion_reasons(model, who.enforced, values, changed)
     warnings = motion_reasons(model, who.shown, values, changed)
     for reason in motion_reasons(model, who.incoming, values, changed):

@@ -6,10 +6,11 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 from trapd.guard.allowed import allowed_intervals, point_of
+from trapd.guard.limits import displacement
 from trapd.guard.model import GuardModel
 from trapd.physics.species import Species
 from trapd.physics.window import LIMIT, Interval, intersect, stable_intervals
-from trapd.setpoint import Values, unit_of
+from trapd.setpoint import FREQUENCY, Values, unit_of
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -30,6 +31,9 @@ class Window:
 
 def window(model: GuardModel, species: Sequence[Species], values: Values) -> Window:
     """Around ``values``, which are what the instruments really take, for all ``species`` together."""
+    if values[FREQUENCY] <= displacement(model, values, FREQUENCY):
+        nothing = {name: _reach(name, ()) for name in model.limits}
+        return Window(stable=nothing, allowed=nothing)
     return Window(
         stable={name: _reach(name, _stable(model, species, values, name)) for name in model.limits},
         allowed={name: _reach(name, allowed_intervals(model, species, values, name)) for name in model.limits},

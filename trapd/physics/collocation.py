@@ -37,12 +37,12 @@ class HalfPeriod:
 
 @dataclass(frozen=True, kw_only=True)
 class _Panel:
-    """Collocation of one stretch of the half period for d axes, m nodes."""
+    """Collocation of one stretch of the half period for d axes, m nodes: axis by axis, its nodes side by side."""
 
-    cosine: Array  # (m, 1) 2 cos 2 tau at the nodes
-    double: Array  # (m, 1, m, 1) node values from second derivatives at the nodes
-    end: Array  # (2, 1, m, 1) end value and end slope from second derivatives
-    start: Array  # (m d, 2d) free motion at the nodes
+    cosine: Array  # (m,) 2 cos 2 tau at the nodes
+    double: Array  # (m, 1, m) node values from second derivatives at the nodes
+    end: Array  # (2, 1, 1, m) end value and end slope from second derivatives
+    start: Array  # (d m, 2d) free motion at the nodes
     free: Array  # (2d, 2d) free motion at the end
 
 
@@ -68,10 +68,10 @@ def _panel(axes: int, nodes: int, panels: int, index: int) -> _Panel:
     step = pi / 2 / panels
     eye = np.eye(axes)
     return _Panel(
-        cosine=2 * np.cos(2 * (index + at) * step)[:, None],
-        double=(step**2 * matrix @ matrix)[:, None, :, None],
-        end=np.stack([step**2 * weights @ matrix, step * weights])[:, None, :, None],
-        start=np.kron(np.stack([np.ones(nodes), at * step], axis=1), eye).astype(float),
+        cosine=2 * np.cos(2 * (index + at) * step),
+        double=(step**2 * matrix @ matrix)[:, None, :],
+        end=np.stack([step**2 * weights @ matrix, step * weights])[:, None, None, :],
+        start=np.hstack([np.kron(eye, one[:, None]) for one in (np.ones(nodes), at * step)]),
         free=np.kron(np.array([[1.0, step], [0.0, 1.0]]), eye).astype(float),
     )
 
@@ -87,8 +87,7 @@ def _resolution(norm: float) -> tuple[int, int]:
 def half_period(a: Array, q: Array) -> HalfPeriod:
     """Propagate every state, ``a`` and ``q`` (states, d, d). |K| is capped where the solution would overflow: such states are
     unstable, and so is what is returned."""
-    norm = float(largest_stiffness(a, q).max(initial=0.0))
-    nodes, panels = _resolution(min(norm, _WIDEST))
+    nodes, panels = _resolution(min(stiffest(a, q), _WIDEST))
     end = _propagate(a, q, _panel(a.shape[1], nodes, panels, 0))
     for index in range(1, panels):
         end = _propagate(a, q, _panel(a.shape[1], nodes, panels, index)) @ end
@@ -98,16 +97,21 @@ def half_period(a: Array, q: Array) -> HalfPeriod:
 
 def largest_stiffness(a: Array, q: Array) -> Array:
     """(states,) a bound of |A + 2 Q cos 2 tau|."""
-    bound: Array = np.sqrt(np.einsum("sij,sij->s", a, a)) + 2 * np.sqrt(np.einsum("sij,sij->s", q, q))
+    bound: Array = (np.abs(a) + 2 * np.abs(q)).sum(axis=2).max(axis=1)
     return bound
+
+
+def stiffest(a: Array, q: Array) -> float:
+    """The largest such bound of these states."""
+    return float((np.abs(a) + 2 * np.abs(q)).sum(axis=2).max(initial=0.0))
 
 
 def _propagate(a: Array, q: Array, panel: _Panel) -> Array:
     """(states, 2d, 2d): displacement and slope at the panel's end from those at its start."""
     states, d, _ = a.shape
     size = len(panel.start)
-    stiffness = a[:, :, None, :] + panel.cosine * q[:, :, None, :]  # (states, d, m, d)
-    system = (panel.double * stiffness[:, None]).reshape(states, size, size)
+    stiffness = a[..., None] + panel.cosine * q[..., None]  # (states, d, d, m)
+    system = (panel.double * stiffness[:, :, None]).reshape(states, size, size)
     system.reshape(states, -1)[:, :: size + 1] += 1.0
     inner = np.linalg.solve(system, panel.start)
     change = (panel.end * stiffness[:, None]).reshape(states, 2 * d, size) @ inner

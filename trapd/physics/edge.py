@@ -34,15 +34,15 @@ def polish(line: Line, values: Array) -> tuple[Array, list[Side], NDArray[np.int
     """For each row of the line the edge next to its value: its exact place, its side, the axis that dominates the lost mode."""
     conditions = _conditions(line)
     sides = list(conditions)
-    distance = np.abs([_nearest(line, conditions[side], values)[0] for side in sides])
-    choice = distance.argmin(axis=0)
+    found = [_nearest(line, condition, values) for condition in conditions.values()]
+    choice = np.abs([eigenvalues for eigenvalues, _ in found]).argmin(axis=0)
     exact, axis = values.copy(), np.zeros(len(values), dtype=np.intp)
     for index, side in enumerate(sides):
         rows = np.flatnonzero(choice == index)
         if len(rows):
-            exact[rows] = _secant(line[rows], conditions[side], values[rows])
-            vectors = _nearest(line[rows], conditions[side], exact[rows])[1]
-            weight = (vectors.reshape(len(rows), -1, line.c.a.shape[1]) ** 2).sum(axis=1)
+            eigenvalues, vectors = found[index]
+            exact[rows] = _secant(line[rows], conditions[side], values[rows], eigenvalues[rows])
+            weight = (vectors[rows].reshape(len(rows), -1, line.c.a.shape[1]) ** 2).sum(axis=1)
             axis[rows] = weight.argmax(axis=1)
     return exact, [sides[index] for index in choice], axis
 
@@ -73,11 +73,11 @@ def _nearest(line: Line, condition: Condition, values: Array) -> tuple[Array, Ar
     return eigenvalues[rows, index], vectors[rows, :, index]
 
 
-def _secant(line: Line, condition: Condition, values: Array) -> Array:
-    """Root of the nearest eigenvalue; the start where the steps lead away (eigenvalues that only touch)."""
+def _secant(line: Line, condition: Condition, values: Array, eigenvalues: Array) -> Array:
+    """Root of the nearest eigenvalue, given at the start; the start where the steps lead away (eigenvalues that only touch)."""
     reach = _REACH * np.maximum(np.abs(values), 1e-3 * (line.high - line.low))
     before, here = values + _FIRST_STEP * reach, values
-    y_before, y_here = (_nearest(line, condition, x)[0] for x in (before, here))
+    y_before, y_here = _nearest(line, condition, before)[0], eigenvalues
     for _ in range(_STEPS):
         change = y_here - y_before
         step = np.where(change == 0, 0.0, y_here * (here - before) / np.where(change == 0, 1.0, change))

@@ -56,32 +56,25 @@ def coefficients(
     trap: Trap, species: Species, points: Sequence[Point], min_secular_hz: float | None = None
 ) -> Coefficients:
     """A, Q and kappa of every point, (points, 3, 3) and (points,)."""
-    volts = electrode_volts(trap, points)
-    frequency = np.array([point.frequency_hz for point in points], dtype=float)
-    amplitude = np.array([point.amplitude_v for point in points], dtype=float)
-    if not (frequency.min() > 0 and isfinite(frequency.sum()) and isfinite(amplitude.sum())):
-        raise ValueError("every point needs a positive finite drive frequency and a finite amplitude")
-    omega = 2 * pi * frequency
-    scale = 2 * species.charge_c / (species.mass_kg * omega**2)
-    static = (volts @ trap.stacked_curvature.reshape(-1, 9)).reshape(-1, 3, 3)
-    return Coefficients(
-        a=(2 * scale)[:, None, None] * static,
-        q=(scale * amplitude)[:, None, None] * trap.drive_curvature,
-        kappa=species.damping_per_s / omega,
-        theta=2 * (min_secular_hz or 0.0) / frequency,
-    )
-
-
-def electrode_volts(trap: Trap, points: Sequence[Point]) -> Array:
-    """(points, electrodes) in the trap's order; every electrode must be named, and no other."""
     names = trap.electrode_curvature.keys()
+    frequencies, volts = [], []
     for point in points:
         if point.electrodes.keys() != names:
             raise ValueError(f"a point must name the electrodes {sorted(names)}, not {sorted(point.electrodes)}")
-    volts = np.array([[point.electrodes[name] for name in names] for point in points], dtype=float)
-    if not isfinite(volts.sum()):
-        raise ValueError("every electrode voltage must be finite")
-    return volts.reshape(len(points), len(names))
+        frequencies.append(float(point.frequency_hz))
+        volts.append([float(point.amplitude_v), *map(point.electrodes.__getitem__, names)])
+    frequency, volt = np.array(frequencies), np.array(volts, dtype=float)
+    if not (min(frequencies) > 0 and isfinite(sum(frequencies)) and isfinite(volt.sum())):
+        raise ValueError("every point needs a positive finite drive frequency, a finite amplitude and finite voltages")
+    omega = 2 * pi * frequency
+    scale = 2 * species.charge_c / (species.mass_kg * omega**2)
+    both = (scale[:, None] * volt @ trap.stacked_curvature).reshape(-1, 2, 3, 3)
+    return Coefficients(
+        a=both[:, 0],
+        q=both[:, 1],
+        kappa=species.damping_per_s / omega,
+        theta=2 * (min_secular_hz or 0.0) / frequency,
+    )
 
 
 def at_rest(point: Point, setpoint: str) -> Point:
@@ -97,19 +90,16 @@ def per_volt(trap: Trap, species: Species, points: Sequence[Point], setpoint: st
     """dA/dx and dQ/dx of a voltage, each (points, 3, 3); zero for the drive frequency."""
     if setpoint == FREQUENCY:
         return np.zeros((len(points), 3, 3)), np.zeros((len(points), 3, 3))
-    drive = 1.0 if setpoint == AMPLITUDE else 0.0
-    volts = {name: float(name == setpoint) for name in trap.electrode_curvature}
-    unit = [Point(frequency_hz=point.frequency_hz, amplitude_v=drive, electrodes=volts) for point in points]
-    c = coefficients(trap, species, unit)
-    return c.a, c.q
+    unit = trap.stacked_curvature[trap.setpoints.index(setpoint) - 1]
+    omega = 2 * pi * np.array([point.frequency_hz for point in points], dtype=float)
+    both = ((2 * species.charge_c / (species.mass_kg * omega**2))[:, None] * unit).reshape(-1, 2, 3, 3)
+    return both[:, 0], both[:, 1]
 
 
 def independent_axes(*matrices: Array) -> list[list[Indices]]:
     """Groups of axes that no off-diagonal element of these (..., 3, 3) matrices joins, in lists of equal size."""
-    linked = np.zeros((3, 3), dtype=bool)
-    for matrix in matrices:
-        linked |= (matrix.reshape(-1, 3, 3) != 0).any(axis=0)
-    pairs = [(i, j) for i, j in ((0, 1), (0, 2), (1, 2)) if linked[i, j] or linked[j, i]]
+    linked = np.logical_or.reduce(np.concatenate([matrix.reshape(-1, 9) for matrix in matrices])).tolist()
+    pairs = [(i, j) for i, j in ((0, 1), (0, 2), (1, 2)) if linked[3 * i + j] or linked[3 * j + i]]
     if not pairs:
         return [[(0,), (1,), (2,)]]
     if len(pairs) == 1:

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from itertools import permutations
-from math import pi
+from itertools import pairwise, permutations
+from math import isfinite, pi
 from typing import Any
 
 import numpy as np
@@ -22,11 +22,10 @@ from trapd.physics.trap import Array, Trap
 
 _SAME = 1e-9  # frequencies, in units of the drive's, that count as equal
 _EQUALLY_CLOSE = 1e-6  # difference of squared overlaps that leaves the naming of modes arbitrary
-_ORDERS = np.array(list(permutations(range(3))))
-_AXES = np.arange(3)
+_ORDERS = list(permutations(range(3)))
 _FEW = 6  # states
-_CLOSE = 1e-6  # of sin^2: eigenvalues that meet are good to the root of rounding
-_SURE = 1e-9  # sin^2(pi beta / 2) that rounding cannot have made
+_SURE = 1e-9  # sin^2(pi beta / 2), or a product of them, that rounding cannot have made
+_TINY = float(np.finfo(float).tiny)
 _REAL = 1e-7  # imaginary part of beta below which it is rounding: eigenvalues that meet are good to its square
 
 
@@ -96,21 +95,34 @@ def mathieu(a: float, q: float) -> tuple[bool, bool, float | None, float | None]
 def _inside(c: Coefficients) -> Mask:
     """`accepted`; for a few states by one propagation, which then costs less than the chains, unless it is a close call."""
     if len(c.a) <= _FEW and not c.kappa.any() and c.theta.max() < 1 and clearly_unlocked(c.a, c.q).all():
-        spare = np.linalg.eigvals(half_period(c.a, c.q).sin2).real
+        spare = half_period(c.a, c.q).sin2
         if c.theta.any():
-            spare = spare - np.sin(pi * c.theta / 2)[:, None] ** 2
-        if np.abs(spare).min() > _CLOSE:
-            enough: Mask = np.logical_and.reduce(spare > 0, axis=1)
-            return enough
+            spare = spare - np.sin(pi * c.theta / 2)[:, None, None] ** 2 * np.eye(c.a.shape[1])
+        # Its eigenvalues are real, so all are positive exactly when their sum, sum of products of two, and product are.
+        sums = [_symmetric_functions(one) for one in spare.tolist()]
+        if min(abs(value) for one in sums for value in one) > _SURE:
+            return np.array([min(one) > 0 for one in sums])
     return accepted(c)
+
+
+def _symmetric_functions(matrix: list[list[float]]) -> list[float]:
+    """Sums of the products of one, two, ... eigenvalues of a d x d matrix, d up to 3."""
+    if len(matrix) == 1:
+        return matrix[0]
+    if len(matrix) == 2:
+        (a, b), (c, d) = matrix
+        return [a + d, a * d - b * c]
+    (a, b, c), (d, e, f), (g, h, i) = matrix
+    x, y, z = e * i - f * h, d * i - f * g, d * h - e * g
+    return [a + e + i, x + (a * i - c * g) + (a * e - b * d), a * x - b * y + c * z]
 
 
 def _solve(c: Coefficients) -> _Modes:
     """Modes of stacked states of any kind."""
     undamped = c.kappa == 0
-    if (clearly_unlocked(c.a, c.q) & undamped).all():
+    if undamped.all() and clearly_unlocked(c.a, c.q).all():
         quick = _symmetric(c.a, c.q)
-        if (quick[0] > _SURE).all():
+        if quick[0].min() > _SURE:
             return _held(*quick)
     inside = accepted(c)
     held = np.flatnonzero(inside & undamped)
@@ -128,12 +140,12 @@ def _solve(c: Coefficients) -> _Modes:
 def _held(sin2: Array, start: Array, end: HalfPeriod) -> _Modes:
     """Of undamped states in the first region. Where the drive has turned, after half a period, the motion leans the other way:
     the mean of both displacements, each at its own phase, is the direction of the secular motion."""
-    sin2 = np.clip(sin2, 0.0, 1.0)
+    sin2 = np.minimum(np.maximum(sin2, 0.0), 1.0)
     beta = 2 / pi * np.arcsin(np.sqrt(sin2))
     mean = start * np.sqrt(1 - sin2)[:, None, :] + end.a @ start
-    shape = mean / np.sqrt(np.maximum((mean * mean).sum(axis=1, keepdims=True), np.finfo(float).tiny))
+    shape = mean / np.sqrt(np.maximum((mean * mean).sum(axis=1, keepdims=True), _TINY))
     yes = np.ones(len(sin2), dtype=bool)
-    return _Modes(beta=beta, growth=np.zeros_like(beta), shape=shape, inside=yes, stable=yes)
+    return _Modes(beta=beta, growth=np.zeros(beta.shape), shape=shape, inside=yes, stable=yes)
 
 
 def _other(c: Coefficients, inside: Mask) -> _Modes:
@@ -205,24 +217,22 @@ def _named(modes: _Modes, unfolded: Array, row: int, frequency_hz: float) -> dic
             "growth_per_s": growth * pi * frequency_hz if growth > 0 else None,
         }
     order, ambiguous = _closest(modes.shape[row])
-    beta = modes.beta[row][order]
-    known = bool(np.isfinite(unfolded[row]).all())
+    folded, beta = modes.beta[row].tolist(), unfolded[row].tolist()
     return {
         "stable": True,
         "first_region": bool(modes.inside[row]),
-        "secular_frequencies_hz": tuple((beta * frequency_hz / 2).tolist()),
-        "degenerate": ambiguous or bool((np.diff(np.sort(beta)) < _SAME).any()),
-        "beta": tuple(unfolded[row][order].tolist()) if known else None,
+        "secular_frequencies_hz": tuple(folded[mode] * frequency_hz / 2 for mode in order),
+        "degenerate": ambiguous or any(high - low < _SAME for low, high in pairwise(sorted(folded))),
+        "beta": tuple(beta[mode] for mode in order) if all(map(isfinite, beta)) else None,
         "growth_per_s": None,
     }
 
 
-def _closest(shape: Array) -> tuple[list[int], bool]:
+def _closest(shape: Array) -> tuple[tuple[int, ...], bool]:
     """Which mode is closest to x, y and z, by the sum of squared overlaps; and whether another order is as close."""
-    scores = (shape[_AXES, _ORDERS] ** 2).sum(axis=1)
-    best = int(scores.argmax())
-    ambiguous = bool((scores > scores[best] - _EQUALLY_CLOSE).sum() > 1)
-    return list(_ORDERS[best]), ambiguous
+    x, y, z = (shape * shape).tolist()
+    (second, _), (best, order) = sorted((x[i] + y[j] + z[k], (i, j, k)) for i, j, k in _ORDERS)[-2:]
+    return order, second > best - _EQUALLY_CLOSE
 
 
 def _per_axis(matrix: Array, *, tilted: bool) -> tuple[float, ...] | tuple[tuple[float, ...], ...]:

@@ -31,7 +31,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from trapd.physics.collocation import HalfPeriod, half_period, largest_stiffness
+from trapd.physics.collocation import HalfPeriod, half_period, largest_stiffness, stiffest
 from trapd.physics.equation import Coefficients
 from trapd.physics.trap import Array
 
@@ -41,6 +41,7 @@ Chain = NDArray[Any]  # real, or complex where damping enters
 WIDEST = 2000.0
 """Largest |K| looked at. An undamped region is there narrower than the rounding of its own coefficients (exp(-4 sqrt q))."""
 
+_CLEAR = (11 - sqrt(85)) / 2
 _ROUNDING = 32 * float(np.finfo(float).eps)
 
 
@@ -54,13 +55,14 @@ def reduce_chain(levels: Chain, a: Array, q: Array) -> tuple[Chain, Mask]:
 
     ``levels`` (links, states) from the lowest up, ``a`` and ``q`` (states, d, d); positivity is told for real levels only.
     """
-    eye = np.eye(a.shape[1])
-    norm = largest_stiffness(a, q)
     positive = np.ones(len(a), dtype=bool)
-    link: Chain = levels[-1][:, None, None] * eye - a
-    for level in levels[-2::-1]:
-        link = level[:, None, None] * eye - a - sandwich(q, link)
-        if not np.iscomplexobj(levels) and (level <= norm).any():
+    near = (levels.real <= largest_stiffness(a, q)) & np.isrealobj(levels)
+    open_question = np.logical_or.reduce(near, axis=1).tolist()
+    undriven = levels[:, :, None, None] * np.eye(a.shape[1]) - a
+    link: Chain = undriven[-1]
+    for level, asked in zip(undriven[-2::-1], open_question[-2::-1], strict=True):
+        link = level - sandwich(q, link)
+        if asked:
             positive &= least_eigenvalue(link) > 0
     return link, positive
 
@@ -89,7 +91,7 @@ def least_eigenvalue(matrices: Array) -> Array:
 def mean_stiffness(c: Coefficients) -> Array:
     """H of the module's text, (states, d, d): where ``theta`` > 0 every beta must exceed it; else, with damping, H is singular
     where a displacement stops decaying (theta = i kappa); else at beta = 0."""
-    n = np.arange(1, 1 + harmonics(float(largest_stiffness(c.a, c.q).max(initial=0.0))))[:, None]
+    n = np.arange(1, 1 + harmonics(stiffest(c.a, c.q)))[:, None]
     wanted, damped = c.theta > 0, bool(c.kappa.any())
     shift = np.where(wanted, c.kappa**2 + c.theta**2, 0.0)[:, None, None] * np.eye(c.a.shape[1])
     if not damped and not wanted.any():
@@ -110,25 +112,23 @@ def first_harmonic(c: Coefficients) -> tuple[Array, Mask]:
     """(states, 2d, 2d) symmetric, singular where a displacement of twice the drive's period stops decaying (the beta = 1
     side), and whether the higher harmonics are positive (told without damping only). Without damping the blocks are
     Y - Q (cosines) and -(Y + Q) (sines)."""
-    n = np.arange(1, 1 + harmonics(float(largest_stiffness(c.a, c.q).max(initial=0.0))))[:, None]
+    n = np.arange(1, 1 + harmonics(stiffest(c.a, c.q)))[:, None]
     odd = (2 * n + 1.0) + 0 * c.kappa
     damped = bool(c.kappa.any())
     link, positive = reduce_chain(odd**2 + 2j * odd * c.kappa if damped else odd**2, c.a, c.q)
     eye = np.eye(c.a.shape[1])
     y = eye - c.a - sandwich(c.q, link)
     cross = -np.imag(y) - 2 * c.kappa[:, None, None] * eye
-    y = np.real(y)
-    return np.block([[y - c.q, cross], [cross, -(y + c.q)]]), positive
+    cosines, sines = np.real(y) - c.q, -(np.real(y) + c.q)
+    return np.concatenate([np.concatenate([cosines, cross], 2), np.concatenate([cross, sines], 2)], 1), positive
 
 
 def clearly_unlocked(a: Array, q: Array) -> Mask:
     """(states,) True where a bound of the chain (X_1 > 9 - |A| - |Q|) proves every antiperiodic eigenvalue positive."""
-    size = largest_stiffness(a, q)
-    rest = 9 - size
-    if (
-        rest.min() > 1 and ((np.abs(a) + np.abs(q)).sum(axis=2).max(axis=1) + size**2 / (4 * rest)).max() < 1
-    ):  # Gershgorin
+    # By row sums first (Gershgorin): with g = |A| + |Q| it is enough that g + g^2 / (9 - 2 g) < 1.
+    if (np.abs(a) + np.abs(q)).sum(axis=2).max() < _CLEAR:
         return np.ones(len(a), dtype=bool)
+    rest = 9 - largest_stiffness(a, q)
     eye = np.eye(a.shape[1])
     least = eye - a - q @ q / np.maximum(rest, 1.0)[:, None, None]
     both = np.concatenate([least - q, least + q])
@@ -138,7 +138,7 @@ def clearly_unlocked(a: Array, q: Array) -> Mask:
 
 def locked_harmonics(a: Array, q: Array) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     """Number of negative antiperiodic eigenvalues of -d^2/dtau^2 - K, cosines and sines, each (states,)."""
-    n = np.arange(0, 1 + harmonics(float(largest_stiffness(a, q).max(initial=0.0))))
+    n = np.arange(0, 1 + harmonics(stiffest(a, q)))
     eye = np.eye(a.shape[1])
     link = (2 * n[-1] + 1.0) ** 2 * eye - a
     shared = _negatives(link)
@@ -224,7 +224,7 @@ def regions_passed(c: Coefficients) -> Array:
     a = (c.a[0, diagonal, diagonal] - c.kappa[0] ** 2)[:, None, None]
     q = c.q[0, diagonal, diagonal][:, None, None]
     cosines, sines = locked_harmonics(a, q)
-    n = np.arange(1, 1 + harmonics(float(largest_stiffness(a, q).max())))
+    n = np.arange(1, 1 + harmonics(stiffest(a, q)))
     link = 4.0 * n[-1] ** 2 - a
     periodic = 2 * _negatives(link)
     for k in n[-2::-1]:

@@ -67,8 +67,10 @@ class Trap:
 
     @cached_property
     def stacked_curvature(self) -> Array:
-        """(electrodes, 3, 3), in the order of ``electrode_curvature``."""
-        return np.array(list(self.electrode_curvature.values()), dtype=float).reshape(-1, 3, 3)
+        """(1 + electrodes, 18): what a volt of drive amplitude, then of each electrode, adds to twice the static curvature and
+        to the driven one."""
+        static = [np.concatenate([2 * one, 0 * one]) for one in self.electrode_curvature.values()]
+        return np.array([np.concatenate([0 * self.drive_curvature, self.drive_curvature]), *static]).reshape(-1, 18)
 
 
 def curvature(xx: float, yy: float, zz: float, yz: float, xz: float, xy: float) -> Array:

@@ -24,7 +24,7 @@ from trapd.physics.krein import room
 from trapd.physics.pencil import Line, crossings
 from trapd.physics.point import FREQUENCY, Point
 from trapd.physics.species import Species
-from trapd.physics.trap import AXES, Array, Trap
+from trapd.physics.trap import AXES, Trap
 
 _TOUCHING = 1e-8  # of the room in their middles: two held stretches that meet with less are kept apart
 _ZERO = 1e-13  # of the range
@@ -113,17 +113,18 @@ def _held(line: Line) -> list[list[_Span]]:
     return result
 
 
-def _nodes(line: Line) -> list[Array]:
+def _nodes(line: Line) -> list[list[float]]:
     """Ends of the stretches of every row: its range and the candidates inside, those closer than their rounding as one."""
-    nodes = [np.array([low, high]) for low, high in zip(line.low, line.high, strict=True)]
+    nodes = [[low, high] for low, high in zip(line.low.tolist(), line.high.tolist(), strict=True)]
     moved = np.flatnonzero(line.moves & (line.high > line.low))
     if len(moved):
-        for index, values in zip(moved, crossings(line[moved]), strict=True):
-            low, high = nodes[index]
-            values = values[np.isfinite(values)]
-            values = np.where(np.abs(values) < _ZERO * max(-low, high), 0.0, values)  # where two edges meet at 0 V
-            inner = values[np.diff(values, prepend=low) > _NARROWEST * np.maximum(np.abs(values), 1e-3 * (high - low))]
-            nodes[index] = np.concatenate([[low], inner, [high]])
+        low, high = line.low[moved, None], line.high[moved, None]
+        values = crossings(line[moved])
+        values[np.abs(values) < _ZERO * np.maximum(-low, high)] = 0.0  # where two edges meet at 0 V
+        step = np.diff(values, axis=1, prepend=low)
+        apart = step > _NARROWEST * np.maximum(np.abs(values), 1e-3 * (high - low))
+        for index, row, kept in zip(moved, values, apart, strict=True):
+            nodes[index][1:1] = row[kept].tolist()
     return nodes
 
 

@@ -8,46 +8,31 @@ is put back. One check for each clause; a clause that cannot be tried says why.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from contextlib import closing
 
 from trapd_drivers.conformance import session_clauses, setting_clauses
-from trapd_drivers.conformance.controls import Settings, read_settings, restore_settings, same_settings
-from trapd_drivers.conformance.report import Report, Result
-from trapd_drivers.conformance.trial import Bench, Broken, NotTried, Trial
+from trapd_drivers.conformance.controls import Settings
+from trapd_drivers.conformance.report import Outcome, Report, Result
+from trapd_drivers.conformance.trial import Bench, Broken, Check, NotTried, Trial
 from trapd_drivers.errors import DriverError
 from trapd_drivers.registry import DriverClass
 
-Check = Callable[[Trial], None]
-
-CLAUSES: tuple[Check, ...] = (
-    session_clauses.clause_1,
-    session_clauses.clause_2,
-    session_clauses.clause_3,
-    session_clauses.clause_4,
-    session_clauses.clause_5,
-    session_clauses.clause_6,
-    session_clauses.clause_7,
-    session_clauses.clause_8,
-    setting_clauses.clause_9,
-    setting_clauses.clause_10,
-    setting_clauses.clause_11,
-    setting_clauses.clause_12,
-    setting_clauses.clause_13,
-    setting_clauses.clause_14,
-    setting_clauses.clause_15,
-    setting_clauses.clause_16,
-)
-"""One for each clause, in the contract's order; the first line of each docstring is its title."""
+CLAUSES: tuple[Check, ...] = (*session_clauses.CLAUSES, *setting_clauses.CLAUSES)
+"""One for each clause, in the contract's order; the docstring of each is its title."""
 
 
 def run(bench: Bench) -> Report:
     """Try every clause. `DriverError` when the instrument cannot even be opened and read before the first."""
-    before = _settings(bench)
+    with closing(bench.open()) as instrument:
+        before = Settings.of(instrument)
     try:
         results = tuple(_try(check, number, bench) for number, check in enumerate(CLAUSES, start=1))
     finally:
         if bench.allow_output:
-            _put_back(bench, before)
+            with closing(bench.open()) as instrument:
+                if not before.hold_at(instrument):
+                    before.restore(instrument)
+                instrument.read_status()  # the errors the kit provoked
     return Report(driver=getattr(bench.driver, "__name__", str(bench.driver)), resource=bench.resource, results=results)
 
 
@@ -63,37 +48,20 @@ def assert_conforms(
 
 
 def _try(check: Check, number: int, bench: Bench) -> Result:
-    title = (check.__doc__ or "").strip()
+    outcome: Outcome = "pass"
+    reason = ""
     trial = Trial(bench)
     try:
         check(trial)
-    except NotTried as reason:
-        return Result(clause=number, title=title, outcome="skipped", reason=str(reason))
-    except (Broken, DriverError) as reason:
-        return Result(clause=number, title=title, outcome="fail", reason=str(reason))
+    except NotTried as why:
+        outcome, reason = "skipped", str(why)
+    except (Broken, DriverError) as why:
+        outcome, reason = "fail", str(why)
     except Exception as error:
-        return Result(clause=number, title=title, outcome="fail", reason=f"{type(error).__name__}: {error}")
+        outcome, reason = "fail", f"{type(error).__name__}: {error}"
     finally:
         trial.close()
-    return Result(clause=number, title=title, outcome="pass")
-
-
-def _settings(bench: Bench) -> Settings:
-    instrument = bench.driver.open(bench.resource, profile=bench.profile, timeout_s=bench.timeout_s)
-    try:
-        return read_settings(instrument)
-    finally:
-        instrument.close()
-
-
-def _put_back(bench: Bench, before: Settings) -> None:
-    instrument = bench.driver.open(bench.resource, profile=bench.profile, timeout_s=bench.timeout_s)
-    try:
-        if not same_settings(instrument, read_settings(instrument), before):
-            restore_settings(instrument, before)
-        instrument.read_status()  # the errors the kit provoked
-    finally:
-        instrument.close()
+    return Result(clause=number, title=(check.__doc__ or "").strip(), outcome=outcome, reason=reason)
 
 
 __all__ = ["CLAUSES", "Bench", "Report", "Result", "assert_conforms", "run"]

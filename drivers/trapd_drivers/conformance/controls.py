@@ -14,7 +14,7 @@ class Knob:
     """One settable quantity; ``measure`` where the interface has one for it."""
 
     name: str
-    channel: int
+    channel: int = 0
     scale: Scale
     set: Callable[[float], None]
     read: Callable[[], float]
@@ -34,29 +34,17 @@ class Knob:
 class Switch:
     """One output."""
 
-    channel: int
+    channel: int = 0
     set: Callable[[bool], None]
     read: Callable[[], bool]
 
 
 def knobs(instrument: Instrument) -> tuple[Knob, ...]:
     if isinstance(instrument, RfSource):
+        it = instrument
         return (
-            Knob(
-                name="frequency_hz",
-                channel=0,
-                scale=instrument.frequency,
-                set=instrument.set_frequency_hz,
-                read=instrument.read_frequency_hz,
-            ),
-            Knob(
-                name="level_v",
-                channel=0,
-                scale=instrument.level,
-                set=instrument.set_level_v,
-                read=instrument.read_level_v,
-                measure=instrument.measure_level_v,
-            ),
+            Knob(name="frequency_hz", scale=it.frequency, set=it.set_frequency_hz, read=it.read_frequency_hz),
+            Knob(name="level_v", scale=it.level, set=it.set_level_v, read=it.read_level_v, measure=it.measure_level_v),
         )
     if isinstance(instrument, DcSupply):
         return tuple(_voltage(instrument, channel) for channel in instrument.channels)
@@ -76,27 +64,20 @@ def _voltage(instrument: DcSupply, channel: int) -> Knob:
 
 def switches(instrument: Instrument) -> tuple[Switch, ...]:
     if isinstance(instrument, RfSource):
-        return (Switch(channel=0, set=instrument.set_output, read=instrument.read_output),)
+        return (Switch(set=instrument.set_output, read=instrument.read_output),)
     if isinstance(instrument, DcSupply):
-        return tuple(
-            Switch(
-                channel=channel,
-                set=partial(instrument.set_output, channel),
-                read=partial(instrument.read_output, channel),
-            )
-            for channel in instrument.channels
-        )
+        to, of = instrument.set_output, instrument.read_output
+        return tuple(Switch(channel=one, set=partial(to, one), read=partial(of, one)) for one in instrument.channels)
     return ()
 
 
 def readings(instrument: Instrument) -> tuple[Callable[[], object], ...]:
     """Every method that only asks."""
-    measured = tuple(knob.measure for knob in knobs(instrument) if knob.measure is not None)
     return (
         instrument.read_identity,
         instrument.read_status,
         *(knob.read for knob in knobs(instrument)),
-        *measured,
+        *(knob.measure for knob in knobs(instrument) if knob.measure is not None),
         *(switch.read for switch in switches(instrument)),
     )
 
@@ -108,27 +89,25 @@ class Settings:
     values: tuple[float, ...]
     outputs: tuple[bool, ...]
 
+    @classmethod
+    def of(cls, instrument: Instrument) -> Settings:
+        values = tuple(knob.read() for knob in knobs(instrument))
+        return cls(values=values, outputs=tuple(switch.read() for switch in switches(instrument)))
 
-def read_settings(instrument: Instrument) -> Settings:
-    return Settings(
-        values=tuple(knob.read() for knob in knobs(instrument)),
-        outputs=tuple(switch.read() for switch in switches(instrument)),
-    )
+    def hold_at(self, instrument: Instrument) -> bool:
+        """Whether the instrument has them now, within the accuracy of each quantity."""
+        now = Settings.of(instrument)
+        pairs = zip(knobs(instrument), self.values, now.values, strict=True)
+        return self.outputs == now.outputs and all(abs(a - b) <= knob.scale.accuracy(a) for knob, a, b in pairs)
 
-
-def restore_settings(instrument: Instrument, before: Settings) -> None:
-    """Off first where it was off, then the values, then on where it was on."""
-    for switch, on in zip(switches(instrument), before.outputs, strict=True):
-        if not on:
-            switch.set(False)
-    for knob, value in zip(knobs(instrument), before.values, strict=True):
-        knob.set(min(max(value, knob.scale.low), knob.scale.high))
-    for switch, on in zip(switches(instrument), before.outputs, strict=True):
-        if on:
-            switch.set(True)
-
-
-def same_settings(instrument: Instrument, one: Settings, other: Settings) -> bool:
-    """Within the accuracy of each quantity."""
-    pairs = zip(knobs(instrument), one.values, other.values, strict=True)
-    return one.outputs == other.outputs and all(abs(a - b) <= knob.scale.accuracy(a) for knob, a, b in pairs)
+    def restore(self, instrument: Instrument) -> None:
+        """Off first where it was off, then the values, then on where it was on."""
+        states = list(zip(switches(instrument), self.outputs, strict=True))
+        for switch, on in states:
+            if not on:
+                switch.set(False)
+        for knob, value in zip(knobs(instrument), self.values, strict=True):
+            knob.set(min(max(value, knob.scale.low), knob.scale.high))
+        for switch, on in states:
+            if on:
+                switch.set(True)

@@ -41,7 +41,6 @@ class Proxy:
         self._target = (match[2], int(match[3]))
         self._listener = socket.create_server(("127.0.0.1", 0))
         self.resource = f"{match[1]}::127.0.0.1::{self._listener.getsockname()[1]}::SOCKET"
-        self.connections = 0
         self.messages: list[str] = []
         self.mode: Mode = "pass"
         self.identity: str | None = None
@@ -87,7 +86,6 @@ class Proxy:
         with contextlib.suppress(OSError):
             while True:
                 driver, _ = self._listener.accept()
-                self.connections += 1
                 try:
                     instrument = socket.create_connection(self._target, timeout=5.0)
                 except OSError:

@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Literal
 
+Outcome = Literal["pass", "fail", "skipped"]
+
 
 @dataclass(frozen=True, kw_only=True)
 class Result:
@@ -12,7 +14,7 @@ class Result:
 
     clause: int
     title: str
-    outcome: Literal["pass", "fail", "skipped"]
+    outcome: Outcome
     reason: str = ""
 
     def __str__(self) -> str:
@@ -33,7 +35,7 @@ class Report:
         outcomes = {result.outcome for result in self.results}
         return "fail" not in outcomes and "pass" in outcomes
 
-    def clauses(self, outcome: Literal["pass", "fail", "skipped"]) -> tuple[int, ...]:
+    def clauses(self, outcome: Outcome) -> tuple[int, ...]:
         return tuple(result.clause for result in self.results if result.outcome == outcome)
 
     def __str__(self) -> str:

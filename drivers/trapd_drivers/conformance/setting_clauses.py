@@ -13,6 +13,7 @@ from trapd_drivers.errors import InstrumentRefused, OutOfRange
 from trapd_drivers.interfaces import DcSupply, Instrument
 
 _SETTLES_S = 5.0  # the longest wait for terminals to follow
+_LOOKS_S = 0.01
 _NEAR = 0.2  # a measurement this close to what is programmed is not in the wrong unit
 _ABOUT_ZERO = 0.01  # of full scale
 
@@ -132,6 +133,7 @@ def _require_measured(knob: Knob, expected: float, tolerance: float, state: str)
             time.monotonic() < until_s,
             f"{knob.name}: {found} V measured with the output {state}, expected {expected:g} within {tolerance:g}",
         )
+        time.sleep(_LOOKS_S)
 
 
 def clause_15(trial: Trial) -> None:
@@ -174,3 +176,6 @@ def _open_channels(trial: Trial) -> DcSupply:
     if not isinstance(instrument, DcSupply):
         raise NotTried("it has no channels")
     return instrument
+
+
+CLAUSES = (clause_9, clause_10, clause_11, clause_12, clause_13, clause_14, clause_15, clause_16)

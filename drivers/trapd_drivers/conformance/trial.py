@@ -35,6 +35,10 @@ class Bench:
     timeout_s: float = 0.5
     allow_output: bool = False
 
+    def open(self, resource: str | None = None, timeout_s: float | None = None) -> Instrument:
+        timeout_s = self.timeout_s if timeout_s is None else timeout_s
+        return self.driver.open(resource or self.resource, profile=self.profile, timeout_s=timeout_s)
+
 
 class Trial:
     """One clause's own proxy and instruments; everything is closed at its end."""
@@ -55,11 +59,8 @@ class Trial:
 
     def open(self, timeout_s: float | None = None) -> Instrument:
         """A new instrument through the proxy where there is one."""
-        resource = self._proxy.resource if self._proxy is not None else self.bench.resource
-        timeout_s = timeout_s if timeout_s is not None else self.bench.timeout_s
-        instrument = self.bench.driver.open(resource, profile=self.bench.profile, timeout_s=timeout_s)
-        self._opened.append(instrument)
-        return instrument
+        self._opened.append(self.bench.open(self._proxy.resource if self._proxy else None, timeout_s))
+        return self._opened[-1]
 
     def require_output(self) -> None:
         if not self.bench.allow_output:
@@ -85,6 +86,9 @@ class Trial:
         for instrument in self._opened:
             with suppress(Exception):
                 instrument.interrupt()
+
+
+Check = Callable[[Trial], None]
 
 
 def require(condition: bool, otherwise: str) -> None:

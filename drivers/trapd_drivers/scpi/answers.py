@@ -33,13 +33,8 @@ def identity(text: str) -> Identity:
     if len(fields) != 4 or not fields[0]:
         raise Malformed(f"{text[:80]!r} is not an identity of four fields")
     manufacturer, model, serial, firmware = fields
-    return Identity(
-        manufacturer=manufacturer,
-        model=model,
-        serial=serial,
-        firmware=firmware,
-        simulated=manufacturer.upper().startswith(_SIMULATED),
-    )
+    simulated = manufacturer.upper().startswith(_SIMULATED)
+    return Identity(manufacturer=manufacturer, model=model, serial=serial, firmware=firmware, simulated=simulated)
 
 
 def error_entry(text: str) -> tuple[int, str] | None:

@@ -2,20 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from contextlib import AbstractContextManager, contextmanager
+from collections.abc import Callable
+from contextlib import AbstractContextManager
 from dataclasses import dataclass, field
+from typing import TypeVar
 
 from trapd_drivers.errors import InstrumentRefused, Malformed
 from trapd_drivers.form import Form
 from trapd_drivers.interfaces import Identity
 from trapd_drivers.link import Link
-from trapd_drivers.profile import OutputDialect, Profile, TripDialect
+from trapd_drivers.profile import Profile, Question
 from trapd_drivers.quantity import Reading
 from trapd_drivers.scpi import answers
 
 _POWER_ON = 128  # bit 7 of the standard event status register, IEEE 488.2-1992 11.5.1 [mem]
 _LONGEST_QUEUE = 256
+T = TypeVar("T")
 
 
 @dataclass
@@ -57,25 +59,19 @@ class Session:
         self._link.close()
 
     def read_identity(self) -> Identity:
-        reply = self._link.read_identity()
-        with self._named(self._dialect.identity):
-            return answers.identity(reply)
+        return self._read(self._dialect.identity, self._link.read_identity(), answers.identity)
 
     def read_number(self, reading: Reading, *, query: Form | None = None, channel: int = 0) -> float:
         """The SI value that the reading's query tells, or another ``query`` with replies of the same kind."""
-        query = query or reading.query
-        text = self._ask(query, reading.reply, channel)
-        with self._named(query.text):
-            return reading.unit.to_si(answers.number(text))
+        return reading.unit.to_si(self._ask(query or reading.query, reading.reply, channel, answers.number))
 
-    def read_output(self, query: Form, output: OutputDialect, channel: int = 0) -> bool:
-        word = self._ask(query, output.reply, channel).upper()
-        if word not in output.on_words | output.off_words:
-            raise Malformed(f"{self.resource}: {query.text!r} was answered by {word!r}, neither on nor off")
-        return word in output.on_words
+    def read_state(self, question: Question, channel: int = 0) -> bool:
+        def is_yes(text: str) -> bool:
+            if question.no is not None and text.upper() not in question.yes | question.no:
+                raise Malformed(f"{text[:40]!r} is neither on nor off")
+            return text.upper() in question.yes
 
-    def read_trip(self, trip: TripDialect, channel: int = 0) -> bool:
-        return self._ask(trip.query, trip.reply, channel).upper() in trip.words
+        return self._ask(question.query, question.reply, channel, is_yes)
 
     def command(self, form: Form, *, value: str = "", channel: int = 0, always: bool = False) -> None:
         """Send a command and ask for errors, in one message where the dialect allows it.
@@ -108,10 +104,9 @@ class Session:
 
     def _look(self) -> None:
         if self._dialect.events is not None:
-            reply = self._link.ask(self._dialect.events)
-            with self._named(self._dialect.events):
-                if int(answers.number(reply)) & _POWER_ON:
-                    self._note_power_on()
+            events = self._read(self._dialect.events, self._link.ask(self._dialect.events), answers.number)
+            if int(events) & _POWER_ON:
+                self._note_power_on()
         entries = self._drain(self._dialect.error)
         self._note(entries)
         self._events.errors += entries
@@ -139,26 +134,16 @@ class Session:
         return entries
 
     def _error_entry(self, query: str) -> tuple[int, str] | None:
-        reply = self._link.ask(query)
-        with self._named(query):
-            return answers.error_entry(self._undressed(reply, self._dialect.error_reply))
+        undressed = self._dialect.error_reply.undressed
+        return self._read(query, self._link.ask(query), lambda reply: answers.error_entry(undressed(reply)))
 
-    def _ask(self, query: Form, reply: Form, channel: int) -> str:
+    def _ask(self, query: Form, reply: Form, channel: int, meaning: Callable[[str], T]) -> T:
         message = query.written(channel=channel)
-        answer = self._link.ask(message)
-        with self._named(message):
-            return self._undressed(answer, reply, channel)
+        return self._read(message, self._link.ask(message), lambda text: meaning(reply.undressed(text, channel)))
 
-    def _undressed(self, answer: str, reply: Form, channel: int = 0) -> str:
-        found = reply.found(answer, channel=channel)
-        if found is None:
-            raise Malformed(f"{answer[:80]!r} does not read {reply.text!r}")
-        return found
-
-    @contextmanager
-    def _named(self, query: str) -> Iterator[None]:
-        """Say in a `Malformed` who answered what so."""
+    def _read(self, query: str, reply: str, meaning: Callable[[str], T]) -> T:
+        """What the reply means; when it means nothing, the `Malformed` says who answered what so."""
         try:
-            yield
+            return meaning(reply)
         except Malformed as error:
             raise Malformed(f"{self.resource}: the reply to {query!r}: {error}") from error

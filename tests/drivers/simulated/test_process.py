@@ -7,6 +7,7 @@ import os
 import signal
 import subprocess
 import sys
+import threading
 import time
 from collections.abc import Iterator
 from pathlib import Path
@@ -15,7 +16,8 @@ from typing import Any
 import pytest
 
 from tests.drivers.simulated.client import Client
-from trapd_simulated import RackUseError, ask
+from trapd_simulated import Rack, RackUseError, ask
+from trapd_simulated.control import ControlServer
 
 DRIVERS = Path(__file__).resolve().parents[3] / "drivers"
 COMMAND = [sys.executable, "-m", "trapd_simulated"]
@@ -114,6 +116,13 @@ def test_the_control_port_does_everything_the_python_interface_does(process: sub
         assert client.ask("OUTP?;*ESR?") == "0;128"
 
 
+@pytest.fixture(scope="module")
+def control() -> Iterator[int]:
+    with Rack() as rack, ControlServer(rack, 0, threading.Event()) as server:
+        yield server.port
+        server.shutdown()
+
+
 @pytest.mark.parametrize(
     ("request_", "message"),
     [
@@ -127,12 +136,9 @@ def test_the_control_port_does_everything_the_python_interface_does(process: sub
         ({"do": "electrodes", "t": -1.0}, "earliest"),
     ],
 )
-def test_a_wrong_request_is_answered_with_one_error(
-    process: subprocess.Popen[str], request_: dict[str, Any], message: str
-) -> None:
-    control = first_line(process)["control"]
+def test_a_wrong_request_is_answered_with_one_error(control: int, request_: dict[str, Any], message: str) -> None:
     with pytest.raises(RackUseError, match=message):
-        ask(control, request_.pop("do"), **request_)
+        ask(control, **request_)
     with Client(control) as client:
         assert "error" in json.loads(client.ask("no JSON"))
         assert json.loads(client.ask('{"do": "describe"}'))["ok"]

@@ -10,15 +10,18 @@ import time
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import click
 
-from trapd.cli.answer import examples, json_option, tell_json, wants_json
+from trapd.cli.answer import tell_json, wants_json
+from trapd.cli.demo.bench import Folder
+from trapd.cli.demo.processes import running_daemon, running_rack
+from trapd.cli.demo.story import say_how_to_talk, tell_story
+from trapd.cli.options import command
+from trapd.cli.terminal import STRONG, say
+from trapd.config.quantity import QuantityError, quantity
 from trapd.errors import BadRequest, DaemonUnreachable
-
-if TYPE_CHECKING:
-    from trapd.cli.demo.bench import Folder
 
 _LOOK_S = 0.25
 
@@ -27,11 +30,7 @@ class _Ended(BaseException):
     """Ctrl-C, SIGTERM or a closed terminal: the demo cleans up and ends."""
 
 
-@click.command(
-    "demo",
-    short_help="A simulated rack and a daemon, shown and yours to try.",
-    epilog=examples("trapd demo", "trapd demo --dir demo --for 30s"),
-)
+@command("trapd demo", "trapd demo --dir demo --for 30s")
 @click.option(
     "--dir",
     "directory",
@@ -44,14 +43,11 @@ class _Ended(BaseException):
     metavar="TIME",
     help="Stop by itself after so long, such as 30s; not before the end of the story.",
 )
-@json_option
 def demo_command(directory: Path | None, time_text: str | None) -> None:
-    """A simulated rack and a daemon, what they do with a good and a bad setpoint, and then yours to try.
+    """A simulated rack and a daemon, shown and yours to try. What they do with a good and a bad setpoint comes first.
 
     The trap is invented and nothing real is touched. Ctrl-C ends it; the record stays.
     """
-    from trapd.cli.demo.bench import Folder
-
     seconds = None if time_text is None else _seconds(time_text)
     began = time.monotonic()
     folder = Folder.make(directory)
@@ -66,15 +62,11 @@ def demo_command(directory: Path | None, time_text: str | None) -> None:
 
 
 def _run(folder: Folder, until: float | None) -> None:
-    from trapd.cli.demo.processes import running_daemon, running_rack
-    from trapd.cli.demo.story import wait_until_dark
-
     with running_rack() as rack:
         ports = {name: one["port"] for name, one in rack["instruments"].items()}
         folder.write_trap_file(ports)
         os.environ["TRAPD_AT"] = str(folder.trap_file)
         with running_daemon(folder) as daemon:
-            wait_until_dark(folder)
             if wants_json():
                 tell_json({"trap_file": str(folder.trap_file), "record": str(folder.record), "rack": rack})
                 sys.stdout.flush()
@@ -84,10 +76,7 @@ def _run(folder: Folder, until: float | None) -> None:
 
 
 def _tell(folder: Folder, ports: Mapping[str, int]) -> None:
-    from trapd.cli.demo.story import say_how_to_talk, tell_story
-    from trapd.cli.terminal import STRONG, say
-
-    say("trapd demo: an invented trap, simulated instruments, a real daemon", STRONG)
+    say(("trapd demo: an invented trap, simulated instruments, a real daemon", STRONG))
     say(f"rack: {', '.join(f'{name} on port {port}' for name, port in ports.items())}")
     say(f"trap file: {folder.trap_file}")
     tell_story()
@@ -124,8 +113,6 @@ def _ending_on_signals() -> Iterator[None]:
 
 
 def _seconds(text: str) -> float:
-    from trapd.config.quantity import QuantityError, quantity
-
     try:
         return quantity(text, "time")
     except QuantityError as error:

@@ -9,7 +9,7 @@ import subprocess
 import sys
 import time
 from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from typing import Any
 
 from trapd.cli.demo.bench import Folder
@@ -35,7 +35,7 @@ def running_rack() -> Iterator[Mapping[str, Any]]:
 
 @contextmanager
 def running_daemon(folder: Folder) -> Iterator[subprocess.Popen[Any]]:
-    """``trapd serve`` in its own process, serving."""
+    """``trapd serve`` in its own process, serving, when it has found the trap dark and so empty."""
     command = [sys.executable, "-m", "trapd.cli", "serve", str(folder.trap_file)]
     with folder.log.open("ab") as log, _running(command, stdout=log, stderr=log) as process:
         _wait_until_ready(folder, process)
@@ -68,16 +68,13 @@ def _die_with_parent() -> None:
 def _wait_until_ready(folder: Folder, process: subprocess.Popen[Any]) -> None:
     until = time.monotonic() + READY_S
     while True:
-        try:
-            with Client(folder.trap_file) as client:
-                if client.health()["ready"]:
-                    return
-        except DaemonUnreachable:
-            pass
+        with suppress(DaemonUnreachable), Client(folder.trap_file) as client:
+            if client.status()["situation"]["contents"]["presence"] == "none":
+                return
         if process.poll() is not None:
             raise _did_not_start(folder, process.returncode)
         if time.monotonic() > until:
-            raise Unreachable(f"the daemon did not get ready within {READY_S:g} s; see {folder.log}")
+            raise Unreachable(f"the daemon did not find the trap dark within {READY_S:g} s; see {folder.log}")
         time.sleep(0.05)
 
 

@@ -3,18 +3,13 @@
 from __future__ import annotations
 
 import shlex
-import time
 from collections.abc import Sequence
 
 import click
 
 from trapd.cli.demo.bench import Folder
-from trapd.cli.terminal import FAINT, STRONG, say, say_parts
-from trapd.client import Client
-from trapd.errors import NotConfirmed, Refused, Unreachable
-
-DARK_WITHIN_S = 10.0
-"""A dark trap is known to be empty a second after the start."""
+from trapd.cli.terminal import FAINT, STRONG, say
+from trapd.errors import NotConfirmed, Refused
 
 STORY: tuple[tuple[str, str], ...] = (
     (
@@ -51,42 +46,25 @@ STORY: tuple[tuple[str, str], ...] = (
 """A sentence, and the command that shows what it says."""
 
 
-def wait_until_dark(folder: Folder) -> None:
-    """Until the daemon has seen RF off for long enough to call the trap empty."""
-    until = time.monotonic() + DARK_WITHIN_S
-    with Client(folder.trap_file) as client:
-        while client.status()["situation"]["contents"]["presence"] != "none":
-            if time.monotonic() > until:
-                raise Unreachable(f"the trap was not found dark within {DARK_WITHIN_S:g} s; see {folder.log}")
-            time.sleep(0.1)
-
-
 def tell_story() -> None:
     """Raises when a command ends other than as told: done, or refused."""
+    from trapd.cli.program import PROGRAM  # which loads this file for its help
+
     for sentence, command in STORY:
         say()
         say(sentence)
-        say_parts(("$ ", FAINT), (f"trapd {command}", STRONG))
-        code = _run(shlex.split(command))
-        if code not in (0, Refused.exit_code):
+        say(("$ ", FAINT), (f"trapd {command}", STRONG))
+        code = PROGRAM.main(shlex.split(command), prog_name="trapd", standalone_mode=False)
+        if code not in (None, 0, Refused.exit_code):
             raise NotConfirmed(f"the demo ends here: `trapd {command}` left with exit code {code}")
-
-
-def _run(command: list[str]) -> int:
-    """The exit code of a command of this program."""
-    from trapd.cli.program import PROGRAM
-
-    code = PROGRAM.main(command, prog_name="trapd", standalone_mode=False)
-    return code if isinstance(code, int) else 0
 
 
 def say_how_to_talk(folder: Folder, program: str) -> None:
     """Everything to paste, in the order in which one would try it."""
-    here = [(f"export TRAPD_AT={shlex.quote(str(folder.trap_file))}", "where commands find this daemon")]
-    if program != "trapd":
-        here.append((f"alias trapd={shlex.quote(program)}", ""))
+    alias = [] if program == "trapd" else [(f"alias trapd={shlex.quote(program)}", "")]
     try_these: Sequence[tuple[str, str]] = (
-        *here,
+        (f"export TRAPD_AT={shlex.quote(str(folder.trap_file))}", "where commands find this daemon"),
+        *alias,
         ("trapd status", "what it is doing"),
         ('trapd window "$TRAPD_AT" endcaps=200V', "how far each setpoint may go"),
         ("trapd set endcaps=120V --why 'back again'", "a setpoint of yours, good or bad"),
@@ -98,10 +76,10 @@ def say_how_to_talk(folder: Folder, program: str) -> None:
         ("trapd off", "always there"),
     )
     say()
-    say("It keeps running. In another terminal:", STRONG)
+    say(("It keeps running. In another terminal:", STRONG))
     for command, remark in try_these:
         if remark:
-            say(f"# {remark}", FAINT, indent=2)
+            say((f"# {remark}", FAINT), indent=2)
         click.echo(f"  {command}")  # not wrapped: it is there to be copied
     say()
-    say(f"The daemon's log, with its HTTP address: {folder.log}", FAINT)
+    say((f"The daemon's log, with its HTTP address: {folder.log}", FAINT))
