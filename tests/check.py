@@ -1,6 +1,7 @@
 """``python -m tests.check``: everything CI checks. Format, lint, types, import contract, tests.
 
-Arguments go to pytest, which runs three processes: most tests wait for instruments, not for the processor. Stops at the first failure and says which step it was.
+Arguments go to pytest, which runs three processes: most tests wait for instruments, not for the processor. Stops at
+the first failure and says which step it was.
 """
 
 from __future__ import annotations

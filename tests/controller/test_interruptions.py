@@ -350,3 +350,95 @@ def test_a_full_queue_is_a_refusal_and_stands_in_the_record(tmp_path: Path) -> N
         made.ask("off")
         assert tickets[-1].done.exception(ENOUGH_S) is not None
         made.wait(lambda: any(e.data["code"] == "queue_full" for e in made.entries("result")))
+
+
+def test_no_request_begins_while_contents_are_being_written(tmp_path: Path) -> None:
+    """A move judged for an empty trap must not run once somebody's *held* stands on the disk."""
+    with bench(tmp_path) as made:
+        made.switch_on(held=False)
+        disk = SlowDisk(made, 0.15)
+        held = made.submit("ions", contents=HELD)
+        made.wait(lambda: "contents" in disk.asked)
+        made.ask("stop")
+        answer = made.ask("set", values={"drive.amplitude": 20.0})
+        with pytest.raises(Superseded):
+            held.done.result(ENOUGH_S)
+        assert answer["accepted"] is False
+        assert made.controller.situation.contents == HELD
+
+
+def test_a_second_off_does_not_forget_what_the_first_is_still_trying(tmp_path: Path) -> None:
+    with bench(tmp_path) as made:
+        made.switch_on()
+        made.rack.inject("dc", Fault(kind=FaultKind.HANG))
+        made.ask("off")
+        made.rack.front_panel("rf", "OUTP ON")
+        made.rack.inject("rf", Fault(kind=FaultKind.HANG))
+        made.ask("off")
+        assert set(made.controller.situation.off_pending) == {"rf", "dc"}
+        made.rack.clear("dc")
+        made.wait(lambda: made.controller.situation.off_pending == ("rf",))
+        made.rack.clear("rf")
+        made.wait(lambda: made.controller.situation.off_pending == ())
+        assert not made.rack.electrodes().rf_outputs["rf"]
+
+
+def test_off_is_done_although_its_reason_cannot_be_written(tmp_path: Path) -> None:
+    with bench(tmp_path) as made:
+        made.switch_on()
+        answer = made.ask("off", why="\ud800")  # a lone surrogate is no text
+        assert answer["off"] is True
+        assert answer["recorded"] is False
+        made.wait(lambda: made.controller.situation.contents.presence == "none")
+
+
+def test_a_stop_in_the_dark_of_empty_leaves_nobody_held(tmp_path: Path) -> None:
+    with bench(tmp_path) as made:
+        made.switch_on()
+        ticket = made.submit("empty")
+        made.wait(lambda: made.controller.situation.outputs["drive.output"] is False)
+        made.ask("stop")
+        with pytest.raises(Superseded):
+            ticket.done.result(ENOUGH_S)
+        made.wait(lambda: made.controller.situation.contents.presence == "none")
+        assert not made.rack.electrodes().rf_outputs["rf"]
+
+
+def test_a_power_cycle_seen_by_a_look_that_was_stopped_is_not_forgotten(tmp_path: Path) -> None:
+    with bench(tmp_path) as made:
+        made.switch_on()
+        made.rack.power_cycle("dc", 0.01)
+        made.rack.front_panel("dc", "SOUR1:VOLT 120;:OUTP1 ON;:SOUR2:VOLT 1;:OUTP2 ON;:OUTP3 ON")
+        made.rack.inject("rf", Fault(kind=FaultKind.SLOW_REPLY, delay_s=0.5, times=1))
+        first = made.submit("set", values={"rods": 1.5})
+        time.sleep(0.2)
+        made.ask("stop")
+        with pytest.raises(Superseded):
+            first.done.result(ENOUGH_S)
+        made.ask("set", values={"rods": 1.2})
+        assert made.controller.situation.contents == Contents(presence="unknown", ions=HELD.ions)
+        made.wait(
+            lambda: any("dc was switched on" in " ".join(e.data.get("differences", ())) for e in made.entries("found"))
+        )
+
+
+@pytest.mark.parametrize(
+    ("before", "then", "guarded"),
+    [
+        (
+            Contents(presence="loading", incoming=("40Ca+",)),
+            Contents(presence="loading", incoming=("88Sr+",)),
+            {"40Ca+"},
+        ),
+        (Contents(presence="loading", incoming=("40Ca+",)), Contents(presence="unknown"), {"40Ca+"}),
+    ],
+)
+def test_what_was_loading_is_guarded_by_whatever_is_declared_next(
+    tmp_path: Path, before: Contents, then: Contents, guarded: set[str]
+) -> None:
+    toml = QUICK.replace('ion = "40Ca+"\n', 'ion = "40Ca+"\n\n[[species]]\nion = "88Sr+"\n')
+    with bench(tmp_path, toml) as made:
+        made.switch_on(held=False)
+        made.ask("ions", contents=before)
+        made.ask("ions", contents=then)
+        assert guarded <= set(made.controller.situation.contents.ions)

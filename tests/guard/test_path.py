@@ -251,3 +251,11 @@ def test_lag_residues_of_the_stretches_before_are_judged_with_the_next() -> None
         if state.residue and state.values[name] != NORTH_WORK[name]
     }
     assert left == {("endcaps", -0.6), ("endcaps", 0.6), ("rods", -0.005), ("rods", 0.005)}
+
+
+def test_a_range_boundary_of_the_frequency_itself_is_not_crossed_with_ions_held() -> None:
+    model = with_limit(NORTH, FREQUENCY, boundaries=(21.005e6,))
+    verdict, ramp = judge_move(model, CALCIUM, NORTH_WORK, {**NORTH_WORK, FREQUENCY: 21.01e6})
+    assert ramp is None
+    assert [(one.rule, one.bound) for one in verdict.reasons] == [(rules.BOUNDARY, 21.005e6)]
+    accepted(model, NONE, NORTH_WORK, **{FREQUENCY: 21.01e6})

@@ -164,3 +164,10 @@ def test_a_range_boundary_is_not_crossed_on_the_way_back_either() -> None:
 
 def recovers(verdict: Verdict) -> bool:
     return verdict.accepted and verdict.recovering
+
+
+def test_a_senseless_target_is_refused_before_a_way_to_it_is_cut_into_steps() -> None:
+    """2e11 steps would not fit into any memory."""
+    outside = {**NORTH_WORK, AMPLITUDE: 415.0}
+    verdict, ramp = judge_move(NORTH, CALCIUM, outside, {**outside, "endcaps": 1e12})
+    assert (verdict.accepted, ramp) == (False, None)

@@ -32,6 +32,7 @@ from trapd.guard.limits import level_of
 from trapd.guard.model import GuardModel
 from trapd.guard.motion_rules import _margin
 from trapd.guard.verdict import judge, judge_move
+from trapd.guard.window import window
 from trapd.physics.species import Species, ion
 from trapd.setpoint import AMPLITUDE, FREQUENCY, Contents, Reason, Values
 
@@ -297,3 +298,23 @@ def test_a_heavier_ion_alone_may_pass_where_a_lighter_one_would_not() -> None:
     strong = north_at(0.0, 1.2, endcaps=20.0)  # q = 0.6 for twice the mass
     assert judge(model, held("heavy"), strong).accepted
     assert not judge(model, CALCIUM, strong).accepted
+
+
+@pytest.mark.parametrize(
+    ("name", "value"),
+    [(AMPLITUDE, 500.0), (AMPLITUDE, -115.0), (FREQUENCY, 21.2e6), ("endcaps", -50.0), ("rods", 12.0)],
+)
+def test_the_nearest_value_of_a_limit_suits_the_ions_as_well(name: str, value: float) -> None:
+    asked = {**NORTH_WORK, name: value}
+    limits = [one for one in judge(NORTH, CALCIUM, asked, [name]).reasons if one.rule == rules.LIMIT]
+    assert [one.quantity for one in limits] == [name]
+    for reason in limits:
+        assert reason.nearest is not None
+        assert judge(NORTH, CALCIUM, {**asked, reason.quantity: reason.nearest}).accepted
+
+
+@pytest.mark.parametrize("frequency_hz", [0.0, -5.0])
+def test_a_frequency_that_is_none_is_answered_and_not_computed(frequency_hz: float) -> None:
+    silly = {**NORTH_WORK, FREQUENCY: frequency_hz}
+    assert rules.LIMIT in {one.rule for one in judge(NORTH, CALCIUM, silly).reasons}
+    assert not any(reach.intervals for reach in window(NORTH, list(NORTH.catalogue.values()), silly).allowed.values())
