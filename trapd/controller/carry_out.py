@@ -88,8 +88,12 @@ def _read_back(instrument: Instrument, command: Command, clock: Clock, live: boo
     if not live or abs(programmed - command.intent.value) > command.accuracy:
         return programmed
     until_ns = clock.monotonic_ns() + int(SETTLE_S * 1e9)
-    while (measured := measure(instrument, command.intent)) is not None:
+    while True:
+        # Looked at before the reading: the one that is given up on was begun after the time had passed.
+        late = clock.monotonic_ns() > until_ns
+        measured = measure(instrument, command.intent)
+        if measured is None:
+            return programmed
         value = measured * command.factor
-        if abs(value - command.intent.value) <= command.accuracy or clock.monotonic_ns() > until_ns:
+        if late or abs(value - command.intent.value) <= command.accuracy:
             return value
-    return programmed
