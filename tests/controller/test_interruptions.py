@@ -150,7 +150,7 @@ def test_a_stop_while_an_intent_is_being_written_withdraws_it(tmp_path: Path) ->
         with pytest.raises(Superseded):
             ramp.done.result(ENOUGH_S)
         made.wait(lambda: open_intents(made) == set())
-        assert made.entries("outcome")[-1].data["state"] == "not sent"
+        made.wait(lambda: made.entries("outcome")[-1].data["state"] == "not sent")
         assert made.commands(before) == []
 
 
@@ -180,7 +180,7 @@ def test_contents_on_the_disk_are_the_contents_in_force_also_when_the_request_wa
         with pytest.raises(Superseded):
             ticket.done.result(ENOUGH_S)
         made.wait(lambda: made.controller.situation.contents.presence == "none")
-        assert made.entries("contents")[-1].data["presence"] == "none"
+        made.wait(lambda: made.entries("contents")[-1].data["presence"] == "none")
 
 
 def test_a_stopped_move_knows_where_it_stands(tmp_path: Path) -> None:

@@ -159,9 +159,8 @@ def test_a_first_start_on_a_dark_trap_ends_empty_and_sends_queries_only(tmp_path
     with bench(tmp_path) as made:
         made.wait_until_empty()
         assert made.commands() == []
-        contents = made.entries("contents")
-        assert [entry.data["presence"] for entry in contents] == ["unknown", "none"]
-        assert contents[-1].actor == "trapd"
+        made.wait(lambda: [one.data["presence"] for one in made.entries("contents")] == ["unknown", "none"])
+        assert made.entries("contents")[-1].actor == "trapd"
 
 
 def test_set_before_on_says_what_comes_first(tmp_path: Path) -> None:
