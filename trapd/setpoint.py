@@ -41,6 +41,11 @@ class Contents:
     incoming: tuple[str, ...] = ()
     expires_us: int | None = None
 
+    @property
+    def possible(self) -> dict[str, int]:
+        """Everything that may be in the trap, what is coming in included."""
+        return dict.fromkeys(self.incoming, 1) | dict(self.ions)
+
 
 @dataclass(frozen=True, kw_only=True)
 class Request:

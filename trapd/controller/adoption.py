@@ -62,6 +62,6 @@ def _contents(desk: Desk, remembered: Remembered) -> tuple[Contents, tuple[str, 
     """After any start the contents are unknown; those last held stay guarded (before any, the catalogue). The second:
     species that the trap file no longer knows; with any of them gone the whole catalogue is guarded."""
     last = remembered.contents
-    ions = {} if last is None else dict.fromkeys(last.incoming, 1) | dict(last.ions)
+    ions = {} if last is None else last.possible
     gone = tuple(name for name in ions if name not in desk.model.catalogue)
     return Contents(presence="unknown", ions={} if gone else ions), gone

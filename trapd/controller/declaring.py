@@ -87,7 +87,7 @@ def _take_over(desk: Desk, contents: Contents) -> None:
 def _completed(desk: Desk, contents: Contents) -> Contents:
     """What was not said: who is guarded while loading, and after doubt. Nobody who may be there is dropped."""
     before = desk.situation.contents
-    present = dict.fromkeys(before.incoming, 1) | dict(before.ions)
+    present = before.possible
     if contents.presence == "loading":
         # Of a trap of unknown contents everything in the catalogue may be in it, and stays guarded.
         unknown = before.presence == "unknown" and not present

@@ -79,7 +79,7 @@ def no_longer_known(desk: Desk, why: str) -> None:
     """Doubt: those held stay guarded, and a person must say again what is in the trap."""
     contents = desk.situation.contents
     if contents.presence in ("held", "loading"):
-        unknown = Contents(presence="unknown", ions=dict.fromkeys(contents.incoming, 1) | dict(contents.ions))
+        unknown = Contents(presence="unknown", ions=contents.possible)
         desk.change(contents=unknown)
         desk.note(contents_draft(unknown, DAEMON, why))
 

@@ -38,8 +38,3 @@ class Situation:
     off_pending: tuple[str, ...] = ()
     doubt: tuple[str, ...] = ()
     unwritten: int = 0
-
-    @property
-    def is_off(self) -> bool:
-        """No output is on."""
-        return not any(self.outputs.values())

@@ -71,7 +71,7 @@ def plan_path(model: GuardModel, who: Watched, present: Values, target: Values, 
         return Plan(ramp=None, reasons=tuple(reasons))
     broken = severity(model, who.enforced, present)
     if broken:
-        return _recover(model, who, present, target, moved)
+        return _recover(model, who, present, target, moved, broken)
     if not target_is_clean:
         return Plan(ramp=None)
     search = _Search(model=model, who=who, target=target)
@@ -98,9 +98,10 @@ def _fixed_frequency(model: GuardModel, who: Watched, present: Values, target: V
     ]
 
 
-def _recover(model: GuardModel, who: Watched, present: Values, target: Values, moved: tuple[str, ...]) -> Plan:
+def _recover(
+    model: GuardModel, who: Watched, present: Values, target: Values, moved: tuple[str, ...], broken: Severity
+) -> Plan:
     """Whole moves in the order that worsens nothing, each judged at every step."""
-    broken = severity(model, who.enforced, present)
     worse = worsens(broken, severity(model, who.enforced, target))
     if worse is not None:  # and before a way to a senseless target is cut into steps
         return Plan(ramp=None, reasons=(_worse_reason(moved[0], target[moved[0]], worse, broken),))

@@ -10,7 +10,7 @@ from trapd.guard.contents import Watched, watched
 from trapd.guard.limits import displacement, limit_reasons
 from trapd.guard.model import GuardModel
 from trapd.guard.motion_rules import motion_reasons, nearest_allowed
-from trapd.guard.path import Plan, plan_path
+from trapd.guard.path import plan_path
 from trapd.guard.rules import STABILITY
 from trapd.physics.floquet import motion
 from trapd.setpoint import FREQUENCY, Contents, Motion, Ramp, Reason, Values, Verdict
@@ -75,6 +75,3 @@ def motion_of(model: GuardModel, who: Watched, values: Values) -> tuple[Motion, 
     if values[FREQUENCY] <= 0:
         return ()
     return tuple(motion(model.trap, one, point_of(values)) for one in who.everybody)
-
-
-__all__ = ["Plan", "judge", "judge_move", "motion_of", "state_reasons"]
