@@ -84,7 +84,7 @@ def running_trap(
         with Rack(settings, seed=seed, speed=speed) as own, running_trap(tmp_path, toml, rack=own, clock=clock) as trap:
             yield trap
         return
-    path = traps.write(tmp_path, _here(toml), rf=rack.ports["rf"], dc=rack.ports["dc"])
+    path = traps.write(tmp_path, _here(toml), **rack.ports)
     daemon = Daemon(path, clock=clock)
     daemon.start()
     try:

@@ -1,4 +1,4 @@
-"""One valid trap file per geometry, for every test of the project, and `write`, which puts one on disk."""
+"""One valid trap file per geometry, what scans add to it, and `write`, which puts one on disk; for every test."""
 
 from __future__ import annotations
 
@@ -159,6 +159,37 @@ min_secular_frequency = "20 Hz"
 "drive.amplitude" = "500 V"
 top = "0 V"
 """
+
+SCANS = """\
+
+[tickle]
+instrument = "tickle"
+level_max = "20 mV"
+
+[counter]
+instrument = "counter"
+floor = "500 /s"
+
+[instruments.tickle]
+driver = "scpi-rf-source"
+resource = "TCPIP::127.0.0.1::5027::SOCKET"
+
+[instruments.counter]
+driver = "scpi-photon-counter"
+resource = "TCPIP::127.0.0.1::5028::SOCKET"
+
+[scans.x]
+mode = "x"
+tickle = "0.5 mV"
+span = "200 kHz"
+dwell = "20 ms"
+target = "50 Hz"
+
+[[schedule]]
+scan = "x"
+cron = "*/30 * * * *"
+"""
+"""Appended to `NORTH_BENCH` or `RING`: an x scan, due each half hour."""
 
 
 def write(folder: Path, text: str, name: str = "trap.toml", **ports: int) -> Path:

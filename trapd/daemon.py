@@ -28,6 +28,7 @@ from trapd.errors import ConfigError, InstrumentUnreachable
 from trapd.instrument_lock import InstrumentLocks
 from trapd.record import Draft, Reader, Record
 from trapd.remember import remember
+from trapd.schedule import Schedule
 from trapd.setpoint import Contents
 from trapd.wiring import Wiring
 from trapd_drivers.absent import open_or_absent
@@ -39,6 +40,13 @@ ADOPTION_S = 30.0
 """The longest the first look at the instruments may take."""
 
 CLOSING_S = 10.0
+
+_CHATTY = {
+    "alembic": logging.WARNING,
+    "apscheduler": logging.WARNING,
+    "pint": logging.ERROR,
+    "uvicorn": logging.WARNING,
+}
 
 _log = logging.getLogger("trapd")
 
@@ -104,6 +112,11 @@ class Daemon:
         for words in [*found["differences"], *(f"{k}: {v}" for k, v in found["unreachable"].items())]:
             _log.warning("found at the start: %s", words)
 
+        reader = stack.enter_context(Reader.open(config.record_file))
+        schedule = Schedule(config.schedule, controller=self.controller, record=record, reader=reader, clock=self.clock)
+        schedule.start()
+        stack.callback(schedule.close, CLOSING_S)
+
         service = Service(
             config=config,
             model=model,
@@ -113,6 +126,7 @@ class Daemon:
             clock=self.clock,
             judges=others,
             version=version("trapd"),
+            schedule=schedule,
             simulated=all(one["simulated"] for one in found["identities"].values()) and not found["unreachable"],
         )
         self.simulated = service.simulated
@@ -126,7 +140,7 @@ class Daemon:
 def serve(path: Path) -> int:
     """`trapd serve`: run until SIGTERM or SIGINT. Outputs are left as they are."""
     logging.basicConfig(level=logging.INFO, format="%(asctime)s %(levelname)s %(message)s")
-    for chatty, level in (("alembic", logging.WARNING), ("uvicorn", logging.WARNING), ("pint", logging.ERROR)):
+    for chatty, level in _CHATTY.items():
         logging.getLogger(chatty).setLevel(level)
     # Blocked before any thread exists, so that every thread inherits it and only `sigwait` takes them: a handler would run
     # in the main thread only, and the kernel may wake another one.
@@ -147,7 +161,9 @@ def serve(path: Path) -> int:
 
 
 def _start_draft() -> Draft:
-    software = {name: version(name) for name in ("trapd", "numpy", "scipy", "pyvisa", "pyvisa-py", "sqlalchemy")}
+    software = {
+        name: version(name) for name in ("trapd", "numpy", "scipy", "pyvisa", "pyvisa-py", "sqlalchemy", "apscheduler")
+    }
     return Draft(kind="start", actor="trapd", data={"software": software, "python": platform.python_version()})
 
 

@@ -2,17 +2,30 @@
 
 from __future__ import annotations
 
-from trapd.controller import Remembered
+from trapd.controller import Claim, Measured, Remembered, SchedulePause
 from trapd.record import Entry, Reader
-from trapd.setpoint import AMPLITUDE, Contents
+from trapd.setpoint import AMPLITUDE, TICKLE, TICKLE_OUTPUT, Contents
 from trapd.wiring import DRIVE_OUTPUT
+
+_MANY = 200
+_MEASURED = (
+    "scan",
+    "species",
+    "mode",
+    "frequency_hz",
+    "uncertainty_hz",
+    "predicted_hz",
+    "predicted_uncertainty_hz",
+    "at_us",
+)
 
 
 def remember(reader: Reader) -> Remembered:
     """Read before this run writes its own start."""
     state = reader.last_commanded()
     outputs = {name: command.level == 1.0 for name, command in state.outputs.items()}
-    values = {name: command.value for name, command in state.setpoints.items()}
+    outputs.pop(TICKLE_OUTPUT, None)
+    values = {name: command.value for name, command in state.setpoints.items() if name != TICKLE}
     for name, on in outputs.items():
         if not on:
             values[AMPLITUDE if name == DRIVE_OUTPUT else name.removesuffix(".output")] = 0.0
@@ -24,6 +37,10 @@ def remember(reader: Reader) -> Remembered:
         contents=None if state.contents is None else _contents(state.contents),
         previous=_previous(reader),
         open_intents=tuple(command.seq for command in open_intents),
+        open_scan=_open_scan(reader),
+        claim=_claim(reader),
+        pause=_pause(reader),
+        measured=_measured(reader),
     )
 
 
@@ -42,3 +59,42 @@ def _previous(reader: Reader) -> dict[str, float] | None:
         if result.data["state"] == "done" and result.data["from"] != result.data["to"]:
             return dict(result.data["from"]) if result.data["returns"] else None
     return None
+
+
+def _open_scan(reader: Reader) -> int | None:
+    """The entry of the newest scan, if nothing says how it ended."""
+    plan = next(iter(reader.entries(kind="plan", newest=True, limit=1)), None)
+    if plan is None:
+        return None
+    request: int = plan.data["request"]
+    ended = any(one.data["request"] == request for one in reader.entries(kind="result", after=plan.seq))
+    return None if ended else request
+
+
+def _claim(reader: Reader) -> Claim | None:
+    newest = next(iter(reader.entries(kind="claim", newest=True, limit=1)), None)
+    if newest is None or newest.data["state"] != "claimed":
+        return None
+    return Claim(entry=newest.seq, who=newest.data["who"], why=newest.data["why"], until_us=newest.data["until_us"])
+
+
+def _pause(reader: Reader) -> SchedulePause | None:
+    newest = next(iter(reader.entries(kind="pause", newest=True, limit=1)), None)
+    if newest is None or newest.data["state"] != "paused":
+        return None
+    return SchedulePause(entry=newest.seq, who=newest.actor, why=newest.data["why"], until_us=newest.data["until_us"])
+
+
+def _measured(reader: Reader) -> dict[str, Measured]:
+    """The newest measurement of each scan, and the setpoints that its plan was made for."""
+    found: dict[str, Measured] = {}
+    for entry in reversed(reader.entries(kind="secular_frequency", newest=True, limit=_MANY)):
+        data = entry.data
+        if data["scan"] not in found:
+            verdict = next(iter(reader.entries(kind="verdict", after=data["request"], limit=1)))
+            found[data["scan"]] = Measured(
+                entry=data["finding"],
+                values=verdict.data["values"],
+                **{name: data[name] for name in _MEASURED},
+            )
+    return found

@@ -23,7 +23,15 @@ Values = Mapping[str, float]
 Presence = Literal["held", "unknown", "none", "loading"]
 """What is known of the trap's contents: see `Contents`."""
 
-RequestKind = Literal["set", "go", "back", "ions", "on", "empty", "off", "stop"]
+RequestKind = Literal[
+    "set", "go", "back", "ions", "on", "empty", "off", "stop", "scan", "claim", "release", "pause", "resume"
+]
+TICKLE = "tickle"
+"""Name under which a tickle's bursts stand among the intents; its output is ``tickle.output``."""
+TICKLE_OUTPUT = "tickle.output"
+TICKLE_FREQUENCY, TICKLE_LEVEL, TICKLE_BURST = "tickle.frequency", "tickle.level", "tickle.burst"
+"""What a tickle is told; its level is that of its generator. None of them is a setpoint of the trap."""
+
 OutcomeState = Literal["confirmed", "differs", "not confirmed", "unreachable", "not sent"]
 
 
@@ -48,8 +56,20 @@ class Contents:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Due:
+    """One moment of the schedule: its name in the file, what it measures, and when it was due (UTC, microseconds)."""
+
+    schedule: str
+    scan: str
+    due_us: int
+
+
+@dataclass(frozen=True, kw_only=True)
 class Request:
-    """What somebody asked for. ``values`` only for ``set``; ``point`` for ``go``, ``on`` and ``empty``."""
+    """What somebody asked for. ``values`` only for ``set``; ``point`` for ``go``, ``on`` and ``empty``; ``scan`` names the
+    scan; ``until_us`` ends a claim or a pause. ``due``: it comes from the schedule, not from a person. ``interrupt``: it
+    stops what runs for somebody else, and goes over somebody else's claim.
+    """
 
     kind: RequestKind
     author: str
@@ -58,6 +78,10 @@ class Request:
     point: str | None = None
     contents: Contents | None = None
     stay_off: bool = False
+    scan: str | None = None
+    until_us: int | None = None
+    interrupt: bool = False
+    due: Due | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -92,6 +116,18 @@ class Verdict:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Envelope:
+    """All that one scan may tell the tickle: frequencies from ``low_hz`` to ``high_hz``, levels up to ``level_v`` (V, zero to
+    peak, at the generator), bursts of ``burst_s`` at most, and nothing later than ``longest_s`` after it began."""
+
+    low_hz: float
+    high_hz: float
+    level_v: float
+    burst_s: float
+    longest_s: float
+
+
+@dataclass(frozen=True, kw_only=True)
 class Step:
     """One command of a ramp: bring ``setpoint`` to ``value``, then wait ``wait_s`` before the next step."""
 
@@ -118,7 +154,7 @@ class Intent:
     """What is about to be sent: one step, resolved to an instrument. Inserted before the first byte.
 
     ``quantity`` is what the instrument is told: ``frequency_hz``, ``level_v`` (synthesizer, zero to peak),
-    ``voltage_v`` or ``output`` (1 or 0).
+    ``voltage_v``, ``output`` (1 or 0), or ``burst``: a tickle of the frequency ``value`` and the level ``level``.
     """
 
     setpoint: str

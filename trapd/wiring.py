@@ -11,8 +11,19 @@ from trapd.errors import ConfigError
 from trapd.guard.limits import displacement, realised_value
 from trapd.guard.model import GuardModel
 from trapd.physics.resonator import gain_at
-from trapd.setpoint import AMPLITUDE, FREQUENCY, Intent, Step, Values, unit_of
-from trapd_drivers.interfaces import DcSupply, Instrument, RfSource, Scale
+from trapd.setpoint import (
+    AMPLITUDE,
+    FREQUENCY,
+    TICKLE_BURST,
+    TICKLE_FREQUENCY,
+    TICKLE_LEVEL,
+    TICKLE_OUTPUT,
+    Intent,
+    Step,
+    Values,
+    unit_of,
+)
+from trapd_drivers.interfaces import DcSupply, Instrument, PhotonCounter, RfSource, Scale
 
 DRIVE_OUTPUT = "drive.output"
 
@@ -55,7 +66,10 @@ class Wiring:
                     f"{config.source}: electrodes.{name} has no instrument or channel; nothing was opened"
                 )
             self.electrodes[name] = (electrode.instrument, electrode.channel)
+        self.tickle = None if config.tickle is None else config.tickle.instrument
+        self.counter = None if config.counter is None else config.counter.instrument
         self._scales = self._find_scales(config, instruments)
+        self._tickle = self._find_tickle(config, instruments)
 
     def _find_scales(self, config: Config, instruments: Mapping[str, Instrument]) -> dict[str, Callable[[], Scale]]:
         source = instruments[self.drive]
@@ -75,14 +89,38 @@ class Wiring:
             scales[name] = partial(supply.voltage, channel)
         return scales
 
+    def _find_tickle(self, config: Config, instruments: Mapping[str, Instrument]) -> RfSource | None:
+        if self.counter is not None and not isinstance(instruments[self.counter], PhotonCounter):
+            raise ConfigError(f"{config.source}: counter.instrument = {self.counter!r} is no photon counter")
+        if self.tickle is None:
+            return None
+        source = instruments[self.tickle]
+        if not isinstance(source, RfSource) or self.tickle == self.drive:
+            raise ConfigError(f"{config.source}: tickle.instrument = {self.tickle!r} is no RF source of its own")
+        return source
+
     @property
     def scales(self) -> dict[str, Scale]:
-        """By setpoint; that of the amplitude is the synthesizer's level."""
-        return {name: scale() for name, scale in self._scales.items()}
+        """By setpoint; that of the amplitude is the synthesizer's level. And those of the tickle."""
+        scales = {name: scale() for name, scale in self._scales.items()}
+        if self._tickle is not None:
+            scales |= {TICKLE_FREQUENCY: self._tickle.frequency, TICKLE_LEVEL: self._tickle.level}
+            if self._tickle.burst is not None:
+                scales[TICKLE_BURST] = self._tickle.burst
+        return scales
 
     @property
     def setpoints(self) -> tuple[str, ...]:
         return (FREQUENCY, AMPLITUDE, *self.electrodes)
+
+    @property
+    def with_outputs(self) -> tuple[str, ...]:
+        """The instruments that `off` switches off, the drive first."""
+        return tuple(dict.fromkeys((self.drive, *(owner for owner, _ in self.electrodes.values()), *self._tickles)))
+
+    @property
+    def _tickles(self) -> tuple[str, ...]:
+        return () if self.tickle is None else (self.tickle,)
 
     def instrument_of(self, setpoint: str) -> str:
         """The instrument behind a setpoint or an output."""
@@ -155,20 +193,34 @@ class Wiring:
     def output(self, setpoint: str, on: bool, *, wait_s: float = 0.0) -> Command:
         """Switch the output behind a setpoint."""
         instrument, channel = self.address(setpoint)
-        intent = Intent(
-            setpoint=output_of(setpoint),
-            value=float(on),
-            unit="1",
-            instrument=instrument,
-            channel=channel,
-            quantity="output",
-            level=float(on),
-        )
+        intent = _switch(output_of(setpoint), instrument, channel, on)
         return Command(intent=intent, factor=1.0, accuracy=0.0, stop_beyond=0.0, wait_s=wait_s)
+
+    def off_intents(self, instrument: str) -> list[Intent]:
+        """What `off` tells an instrument: one intent for each of its outputs."""
+        if instrument == self.tickle:
+            return [_switch(TICKLE_OUTPUT, instrument, None, False)]
+        return [
+            self.output(name, False).intent
+            for name in (AMPLITUDE, *self.electrodes)
+            if self.address(name)[0] == instrument
+        ]
 
     def least_amplitude_v(self, model: GuardModel, frequency_hz: float) -> float:
         """The electrode amplitude at the least level the synthesizer gives."""
         return max(self._scales[AMPLITUDE]().low, 0.0) * gain_at(model.resonator, frequency_hz)
+
+
+def _switch(output: str, instrument: str, channel: int | None, on: bool) -> Intent:
+    return Intent(
+        setpoint=output,
+        value=float(on),
+        unit="1",
+        instrument=instrument,
+        channel=channel,
+        quantity="output",
+        level=float(on),
+    )
 
 
 def send(instrument: Instrument, intent: Intent) -> None:

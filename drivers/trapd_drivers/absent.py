@@ -11,7 +11,7 @@ from collections.abc import Callable, Mapping
 from typing import Any, cast
 
 from trapd_drivers.errors import Malformed, OutOfRange, Unreachable
-from trapd_drivers.interfaces import DcSupply, Instrument, RfSource, Scale
+from trapd_drivers.interfaces import DcSupply, Gauge, Instrument, PhotonCounter, RfSource, Scale
 from trapd_drivers.registry import driver_class
 
 Scales = Mapping[tuple[str, int], Scale]
@@ -31,10 +31,9 @@ def open_or_absent(name: str, resource: str, *, profile: str = "plain", timeout_
         return open_()
     except (Unreachable, Malformed):
         scales, kind = driver.scales(profile), cast(type[Instrument], driver)
-        if issubclass(kind, RfSource):
-            return AbsentRfSource(resource, open_, scales)
-        if issubclass(kind, DcSupply):
-            return AbsentDcSupply(resource, open_, scales)
+        for interface, stand_in in _STAND_INS.items():
+            if issubclass(kind, interface):
+                return stand_in(resource, open_, scales)
         raise  # nothing can stand in for it
 
 
@@ -84,6 +83,10 @@ class AbsentRfSource(_Absent, RfSource):
     def level(self) -> Scale:  # type: ignore[override]
         return self._scales["level", 0] if self._opened is None else self._opened.level
 
+    @property
+    def burst(self) -> Scale | None:  # type: ignore[override]
+        return self._scales.get(("burst", 0)) if self._opened is None else self._opened.burst
+
     set_frequency_hz = _real("set_frequency_hz")
     read_frequency_hz = _real("read_frequency_hz")
     set_level_v = _real("set_level_v")
@@ -91,6 +94,8 @@ class AbsentRfSource(_Absent, RfSource):
     measure_level_v = _real("measure_level_v")
     set_output = _real("set_output")
     read_output = _real("read_output")
+    start_burst = _real("start_burst")
+    read_burst = _real("read_burst")
 
 
 class AbsentDcSupply(_Absent, DcSupply):
@@ -110,3 +115,32 @@ class AbsentDcSupply(_Absent, DcSupply):
     measure_voltage_v = _real("measure_voltage_v")
     set_output = _real("set_output")
     read_output = _real("read_output")
+
+
+class AbsentPhotonCounter(_Absent, PhotonCounter):
+    """See `PhotonCounter`; every call first tries to reach the instrument."""
+
+    @property
+    def gate(self) -> Scale:  # type: ignore[override]
+        return self._scales["gate", 0] if self._opened is None else self._opened.gate
+
+    start_count = _real("start_count")
+    read_count = _real("read_count")
+
+
+class AbsentGauge(_Absent, Gauge):
+    """See `Gauge`; every call, and asking for the unit, first tries to reach the instrument."""
+
+    @property
+    def unit(self) -> str:  # type: ignore[override]
+        return str(self._take_up().unit)
+
+    read_value = _real("read_value")
+
+
+_STAND_INS = {
+    RfSource: AbsentRfSource,
+    DcSupply: AbsentDcSupply,
+    PhotonCounter: AbsentPhotonCounter,
+    Gauge: AbsentGauge,
+}

@@ -1,6 +1,6 @@
 """What every instrument must do. Each docstring is a numbered contract; the conformance kit has a clause for each line.
 
-All quantities are SI: Hz, and volts zero to peak for anything that oscillates. `read_` asks the hardware, `set_`
+All quantities are SI: Hz, s, and volts zero to peak for anything that oscillates. `read_` asks the hardware, `set_`
 commands it. No method sleeps longer than the driver's timeout. Nothing here sends ``*RST``.
 """
 
@@ -8,6 +8,8 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from dataclasses import dataclass
+
+from trapd_drivers.errors import InstrumentRefused
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -96,10 +98,22 @@ class RfSource(Instrument):
     11. `set_x` raises `InstrumentRefused` when the instrument reports an error for it; the old value stands.
     12. `set_frequency_hz` and `set_level_v` never change the output state; `set_output` never changes either value.
     13. `set_output(False)` is idempotent and is sent even when the output is believed off.
+
+    Where it can emit bursts (what is written below is that of an instrument that cannot):
+
+    17. `start_burst` emits the programmed sine from now on for that time and then nothing, by itself, whatever becomes
+        of whoever started it; `read_burst` tells whether it still does.
+    18. `start_burst` outside the scale raises `OutOfRange` and sends nothing.
+    19. A burst of which any part is refused raises `InstrumentRefused` and emits nothing; the output is silent then,
+        even where it was on.
+    20. A burst in progress is replaced by a new one and ended at once by `set_output(False)`. `set_output(True)` means
+        the sine without end, whatever was before.
     """
 
     frequency: Scale
     level: Scale
+    burst: Scale | None = None
+    """Durations of a burst in s, None when the instrument cannot do bursts."""
 
     @abstractmethod
     def set_frequency_hz(self, frequency_hz: float) -> None: ...
@@ -123,6 +137,14 @@ class RfSource(Instrument):
 
     @abstractmethod
     def read_output(self) -> bool: ...
+
+    def start_burst(self, duration_s: float) -> None:
+        """The programmed sine for ``duration_s`` from now; returns when it has begun."""
+        raise InstrumentRefused(f"{self.resource}: cannot emit a burst that ends by itself; nothing was sent")
+
+    def read_burst(self) -> bool:
+        """Whether a burst is being emitted now."""
+        return False
 
 
 class DcSupply(Instrument):
@@ -154,3 +176,37 @@ class DcSupply(Instrument):
 
     @abstractmethod
     def read_output(self, channel: int) -> bool: ...
+
+
+class PhotonCounter(Instrument):
+    """Counts photons for a time that it keeps itself: start, then ask until there is a count.
+
+    21. `start_count` returns at once, and so does `read_count`: None while counting.
+    22. A finished count stays the same, whenever it is asked for, until the next `start_count`.
+    23. `start_count` replaces a count in progress, and nothing of that one is in the new one. Before the first
+        `start_count`, and when the instrument has lost the count (power cycle), `read_count` raises `InstrumentRefused`.
+    24. `start_count` counts for the quantised time, and outside the scale it raises `OutOfRange` and sends nothing.
+    """
+
+    gate: Scale
+    """Counting times in s."""
+
+    @abstractmethod
+    def start_count(self, gate_s: float) -> None: ...
+
+    @abstractmethod
+    def read_count(self) -> int | None: ...
+
+
+class Gauge(Instrument):
+    """An instrument that tells one quantity: a pressure, a temperature, a power.
+
+    25. `read_value` asks the instrument each time. When it cannot tell (switched off, over its range) the call raises
+        `InstrumentRefused` or `Malformed`: a number that was true earlier, or that never was, is not returned.
+    """
+
+    unit: str
+    """The SI unit of what it reads: "Pa", "K", "W"."""
+
+    @abstractmethod
+    def read_value(self) -> float: ...

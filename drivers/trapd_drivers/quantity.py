@@ -13,12 +13,23 @@ from trapd_drivers.interfaces import Scale
 FREQUENCY_UNITS = {"Hz": 1.0, "kHz": 1e3, "MHz": 1e6, "GHz": 1e9}
 DC_UNITS = {"V": 1.0, "mV": 1e-3}
 LEVEL_UNITS = {"Vpk": 1.0, "Vpp": 0.5, "Vrms": math.sqrt(2.0), "dBm": 0.0}  # V zero to peak of a sine, for each
-_SI_PER_UNIT = FREQUENCY_UNITS | DC_UNITS | LEVEL_UNITS
+TIME_UNITS = {"s": 1.0, "ms": 1e-3, "us": 1e-6}
+_GAUGE_UNITS = {
+    "Pa": {"Pa": 1.0, "hPa": 100.0, "mbar": 100.0, "Torr": 101325.0 / 760.0},
+    "K": {"K": 1.0, "degC": 1.0},
+    "W": {"W": 1.0, "mW": 1e-3, "uW": 1e-6},
+    "A": {"A": 1.0, "mA": 1e-3},
+    "V": DC_UNITS,
+}
+GAUGE_UNITS = {name: factor for units in _GAUGE_UNITS.values() for name, factor in units.items()}
+COUNTS = "counts"
+_SI_PER_UNIT = FREQUENCY_UNITS | DC_UNITS | LEVEL_UNITS | TIME_UNITS | GAUGE_UNITS | {COUNTS: 1.0}
+_SI_AT_ZERO = {"degC": 273.15}
 
 
 @dataclass(frozen=True, kw_only=True)
 class Unit:
-    """A number on the wire and the SI value (Hz, V; zero to peak for a sine) at the instrument's real load.
+    """A number on the wire and the SI value (volts zero to peak for a sine) at the instrument's real load.
 
     ``load_factor``: real volts for each volt displayed, 2 for an instrument that displays what 50 ohm would get and
     feeds a high impedance. ``impedance_ohm`` matters to dBm only: P = (V_peak / sqrt 2)^2 / R.
@@ -32,15 +43,20 @@ class Unit:
     def logarithmic(self) -> bool:
         return self.name == "dBm"
 
+    @property
+    def si(self) -> str:
+        """The name of the SI unit that a gauge's numbers become."""
+        return next(si for si, units in _GAUGE_UNITS.items() if self.name in units)
+
     def to_si(self, number: float) -> float:
         if self.logarithmic:
             return self.load_factor * math.sqrt(2.0 * self.impedance_ohm * 1e-3) * _ratio(number)
-        return self.load_factor * _SI_PER_UNIT[self.name] * number
+        return self.load_factor * _SI_PER_UNIT[self.name] * number + _SI_AT_ZERO.get(self.name, 0.0)
 
     def from_si(self, value: float) -> float:
         """The number for ``value``; minus infinity for 0 V in dBm."""
         if not self.logarithmic:
-            return value / (self.load_factor * _SI_PER_UNIT[self.name])
+            return (value - _SI_AT_ZERO.get(self.name, 0.0)) / (self.load_factor * _SI_PER_UNIT[self.name])
         relative = value / (self.load_factor * math.sqrt(2.0 * self.impedance_ohm * 1e-3))
         return 20.0 * math.log10(relative) if relative > 0.0 else -math.inf
 

@@ -24,8 +24,9 @@ class DriverClass(Protocol):
     def scales(self, profile: str) -> Mapping[tuple[str, int], Scale]:
         """Scales by (quantity, channel) as far as the profile states them, without an instrument.
 
-        Quantities are "frequency" and "level" (channel 0) of an RF source, "voltage" of a DC supply's channel. A limit
-        that only the instrument knows is infinite.
+        Quantities are "voltage" of a DC supply's channel; with channel 0 "frequency", "level" and, where there are
+        bursts, "burst" of an RF source, and "gate" of a photon counter. A limit that only the instrument knows is
+        infinite.
         """
 
 

@@ -9,27 +9,36 @@ from trapd_simulated.clock import Clock, ManualClock, RackClock
 from trapd_simulated.control import ask
 from trapd_simulated.errors import RackError, RackUseError, SettingsError
 from trapd_simulated.faults import Fault, FaultKind
+from trapd_simulated.ion import IonState
+from trapd_simulated.ion_settings import ElectrodeSettings, IonSettings
 from trapd_simulated.rack import Rack
 from trapd_simulated.receipts import Received
 from trapd_simulated.settings import (
     ChannelSettings,
     DcSupplySettings,
     Dialect,
+    GaugeSettings,
+    PhotonCounterSettings,
     RackSettings,
     ResonatorSettings,
     RfSourceSettings,
-    load,
 )
+from trapd_simulated.settings_file import load
 
 __all__ = [
     "ChannelSettings",
     "Clock",
     "DcSupplySettings",
     "Dialect",
+    "ElectrodeSettings",
     "Electrodes",
     "Fault",
     "FaultKind",
+    "GaugeSettings",
+    "IonSettings",
+    "IonState",
     "ManualClock",
+    "PhotonCounterSettings",
     "Rack",
     "RackClock",
     "RackError",

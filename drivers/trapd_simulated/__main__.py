@@ -16,7 +16,8 @@ from pathlib import Path
 from trapd_simulated.control import ControlServer
 from trapd_simulated.errors import RackError
 from trapd_simulated.rack import Rack
-from trapd_simulated.settings import RackSettings, load
+from trapd_simulated.settings import RackSettings
+from trapd_simulated.settings_file import load
 
 
 def main(arguments: Sequence[str] | None = None) -> int:

@@ -84,7 +84,9 @@ class Resonator:
     def _final_hz(self, time_s: float, shift_hz: float) -> float:
         """Where the shift would end at the power of ``time_s``; the level counts as settled, heat is far slower."""
         carrier = self._source.carrier(time_s)
-        amplitude_v = carrier.to_v * self._response(carrier.frequency_hz, self._settings.center_hz + shift_hz)
+        amplitude_v = carrier.settled_v(time_s) * self._response(
+            carrier.frequency_hz, self._settings.center_hz + shift_hz
+        )
         return self._settings.warmup_shift_hz * (amplitude_v / self._settings.warmup_reference_v) ** 2
 
     def _response(self, frequency_hz: float, center_hz: float) -> float:
@@ -99,6 +101,7 @@ class Electrodes:
     drive_frequency_hz: float
     drive_amplitude_v: float  # at the electrode, zero to peak
     resonator_center_hz: float
+    frequencies_hz: Mapping[str, float]  # each RF source
     levels_v: Mapping[str, float]  # each RF source at its terminals, zero to peak
     rf_outputs: Mapping[str, bool]
     voltages_v: Mapping[str, Mapping[int, float]]  # at the electrode, behind the lag
@@ -113,6 +116,7 @@ class Bench:
         self._clock = clock
         self._sources = {name: one for name, one in instruments.items() if isinstance(one, RfSource)}
         self._supplies = {name: one for name, one in instruments.items() if isinstance(one, DcSupply)}
+        self._changing: tuple[RfSource | DcSupply, ...] = (*self._sources.values(), *self._supplies.values())
         self._drive = self._sources[settings.instrument]
         self._resonator = Resonator(settings, self._drive, clock.now_s())
 
@@ -124,6 +128,7 @@ class Bench:
         now_s = self._clock.now_s()
         time_s = now_s if time_s is None else time_s
         with self._drive.lock:
+            self._drive.advance(now_s)
             self._resonator.advance(now_s)
             frequency_hz = self._drive.carrier(time_s).frequency_hz
             amplitude_v = self._resonator.amplitude_v(time_s)
@@ -135,12 +140,21 @@ class Bench:
             drive_frequency_hz=frequency_hz,
             drive_amplitude_v=amplitude_v,
             resonator_center_hz=center_hz,
+            frequencies_hz={name: carrier.frequency_hz for name, carrier in carriers.items()},
             levels_v={name: carrier.level_v(time_s) for name, carrier in carriers.items()},
             rf_outputs={name: carrier.on for name, carrier in carriers.items()},
             voltages_v=_each(ramps, lambda ramp: ramp.electrode_v(time_s)),
             terminals_v=_each(ramps, lambda ramp: ramp.terminal_v(time_s)),
             dc_outputs=_each(ramps, lambda ramp: ramp.on),
         )
+
+    def next_change_s(self, after_s: float) -> float:
+        """When something is next switched or told another value behind ``after_s``, as far as known by now."""
+        return min(one.next_change_s(after_s) for one in self._changing)
+
+    def changes(self) -> int:
+        """How often anything has been changed so far."""
+        return sum(one.changes() for one in self._changing)
 
 
 def _each(ramps: Mapping[str, Mapping[int, Ramp]], value: Callable[[Ramp], T]) -> dict[str, dict[int, T]]:

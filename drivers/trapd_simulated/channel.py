@@ -69,6 +69,12 @@ class Channel:
     def ramp(self, time_s: float) -> Ramp:
         return self._ramps.at(time_s)
 
+    def next_change_s(self, after_s: float) -> float:
+        return self._ramps.next_s(after_s)
+
+    def changes(self) -> int:
+        return self._ramps.changes
+
     def terminal_v(self, now_s: float) -> float:
         return self._ramps.latest.terminal_v(now_s)
 

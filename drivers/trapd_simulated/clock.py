@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import time
 from bisect import bisect_right
 from collections import deque
@@ -61,14 +62,22 @@ class Timeline(Generic[T]):
 
     def __init__(self, start_s: float, first: T) -> None:
         self._laws: deque[tuple[float, T]] = deque([(start_s, first)], maxlen=KEPT)
+        self.changes = 0
 
     def change(self, time_s: float, law: T) -> None:
         """From ``time_s`` on, ``law`` holds. Times never run backwards."""
         self._laws.append((max(time_s, self._laws[-1][0]), law))
+        self.changes += 1
 
     @property
     def latest(self) -> T:
         return self._laws[-1][1]
+
+    def next_s(self, after_s: float) -> float:
+        """The time of the first change behind ``after_s``; infinite when there is none yet."""
+        if self._laws[-1][0] <= after_s:
+            return math.inf
+        return self._laws[bisect_right(self._laws, after_s, key=itemgetter(0))][0]
 
     def at(self, time_s: float) -> T:
         """The law in force at ``time_s``; `ValueError` for a time before all that is remembered."""

@@ -34,6 +34,10 @@ def _electrodes(rack: Rack, t: float | None = None) -> dict[str, Any]:
     return asdict(rack.electrodes(t))
 
 
+def _ion_state(rack: Rack) -> dict[str, Any]:
+    return asdict(rack.ion_state())
+
+
 def _inject(rack: Rack, instrument: str, kind: str, **rest: Any) -> None:
     """``rest``: times, delay_s, value, text, channel."""
     known = {one.name for one in fields(Fault)}
@@ -53,6 +57,11 @@ ACTIONS: Mapping[str, Callable[..., Any]] = {
     "power_off": Rack.power_off,
     "power_on": Rack.power_on,
     "power_cycle": Rack.power_cycle,
+    "set_pressure": Rack.set_pressure,
+    "load": Rack.load_ion,
+    "lose": Rack.lose_ion,
+    "ion": _ion_state,
+    "spectrum": Rack.spectrum,
 }
 
 

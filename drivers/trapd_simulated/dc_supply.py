@@ -62,6 +62,16 @@ class DcSupply(Instrument):
             self.advance(self.clock.now_s())
             return {number: channel.ramp(time_s) for number, channel in self.channels.items()}
 
+    def next_change_s(self, after_s: float) -> float:
+        """When a channel is next told something else behind ``after_s``; infinite when not by now."""
+        with self.lock:
+            return min(channel.next_change_s(after_s) for channel in self.channels.values())
+
+    def changes(self) -> int:
+        """How often a channel's law has changed so far."""
+        with self.lock:
+            return sum(channel.changes() for channel in self.channels.values())
+
     def reset(self, now_s: float) -> None:
         self._selected = 1
         for channel in self.channels.values():

@@ -9,7 +9,11 @@ from trapd_simulated.settings import Dialect
 _PER_PEAK_VOLT = {"VPK": 1.0, "VPP": 2.0, "VRMS": math.sqrt(0.5)}
 _LOAD_OHM = 50.0
 _HERTZ = {"HZ": 1.0, "KHZ": 1e3, "MHZ": 1e6}
-_DISPLAY = {"HZ": "Hz", "KHZ": "kHz", "MHZ": "MHz", "VPK": "V", "VPP": "Vpp", "VRMS": "Vrms", "DBM": "dBm", "V": "V"}
+_PER_MBAR = {"MBAR": 1.0, "PA": 100.0, "TORR": 760.0 / 1013.25}
+_DISPLAY = {
+    **{unit.upper(): unit for unit in ("Hz", "kHz", "MHz", "Vpp", "Vrms", "dBm", "V", "s", "mbar", "Pa", "Torr")},
+    "VPK": "V",
+}
 
 
 def level_to_volts(dialect: Dialect, displayed: float) -> float:
@@ -45,13 +49,22 @@ def greatest(value: float, resolution: float) -> float:
 def number_reply(dialect: Dialect, header: str, unit: str, *values: float) -> str:
     """``values`` as the dialect writes them: bare, with their unit behind, or with ``header`` in front."""
     style = f".{dialect.digits}{'E' if dialect.numbers == 'NR3' else 'f'}"
-    behind = f" {_DISPLAY[unit]}" if dialect.replies == "unit" else ""
+    behind = f" {_DISPLAY[unit]}" if unit and dialect.replies == "unit" else ""
     return _with_header(dialect, header, [f"{value + 0.0:{style}}{behind}" for value in values])
 
 
 def frequency_reply(dialect: Dialect, header: str, frequency_hz: float) -> str:
     unit = dialect.frequency_unit
     return number_reply(dialect, header, unit, frequency_hz / _HERTZ[unit])
+
+
+def pressure_reply(dialect: Dialect, header: str, pressure_mbar: float) -> str:
+    unit = dialect.pressure_unit
+    return number_reply(dialect, header, unit, pressure_mbar * _PER_MBAR[unit])
+
+
+def integer_reply(dialect: Dialect, header: str, value: int) -> str:
+    return _with_header(dialect, header, [str(value)])
 
 
 def state_reply(dialect: Dialect, header: str, *states: bool) -> str:

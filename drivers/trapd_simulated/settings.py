@@ -1,18 +1,13 @@
-"""What stands in the rack: frozen records, their defaults, which suit a linear trap driven at 21 MHz, and their file."""
+"""What stands in the rack: frozen records and their defaults, which suit a linear trap driven at 21 MHz."""
 
 from __future__ import annotations
 
-import json
-import tomllib
 from collections.abc import Mapping
-from dataclasses import dataclass, field, fields, is_dataclass
-from pathlib import Path
-from types import UnionType
-from typing import Any, ClassVar, Literal, TypeVar, Union, get_args, get_origin, get_type_hints
+from dataclasses import dataclass, field
+from typing import ClassVar, Literal
 
 from trapd_simulated.errors import SettingsError
-
-T = TypeVar("T")
+from trapd_simulated.ion_settings import IonSettings
 
 
 def _ascending(names: str, low: float, high: float) -> None:
@@ -33,6 +28,7 @@ class Dialect:
     output_words: bool = False  # OUTP? answers ON and OFF instead of 1 and 0
     frequency_unit: Literal["HZ", "KHZ", "MHZ"] = "HZ"  # of frequency replies
     frequency_default_unit: Literal["HZ", "KHZ", "MHZ"] = "HZ"  # of a frequency sent without suffix
+    pressure_unit: Literal["MBAR", "PA", "TORR"] = "MBAR"
     measures: bool = True  # False: no MEASure subsystem, only the programmed value can be asked for
     min_spacing_s: float = 0.0  # rack time; a message sooner after the one before is dropped
     spacing_code: int = -363  # and this error is queued for it
@@ -71,6 +67,9 @@ class RfSourceSettings(InstrumentSettings):
     settle_s: float = 1e-3  # time constant of the level after a change or a switch
     range_boundaries_v: tuple[float, ...] = ()  # crossing one interrupts the output
     range_dropout_s: float = 5e-3
+    bursts: bool = True  # False: knows no BURSt subsystem
+    burst_min_s: float = 1e-5
+    burst_max_s: float = 1000.0
     accuracy_absolute_v: float = 2e-3  # of MEASure:AC?, in volts rms
     accuracy_relative: float = 2e-3
 
@@ -79,6 +78,7 @@ class RfSourceSettings(InstrumentSettings):
         _ascending("level_min_v, level_max_v", self.level_min_v, self.level_max_v)
         _ascending("0, frequency_resolution_hz", 0.0, self.frequency_resolution_hz)
         _ascending("0, level_resolution", 0.0, self.level_resolution)
+        _ascending("burst_min_s, burst_max_s", self.burst_min_s, self.burst_max_s)
         if self.dialect.amplitude_unit == "DBM":
             _ascending("0, level_min_v (in dBm)", 0.0, self.level_min_v)
 
@@ -117,6 +117,35 @@ class DcSupplySettings(InstrumentSettings):
 
 
 @dataclass(frozen=True, kw_only=True)
+class PhotonCounterSettings(InstrumentSettings):
+    """Counts what the ion scatters."""
+
+    KIND: ClassVar = "photon-counter"
+    model: str = "PHOTON COUNTER"
+    serial: str = "SIM-COUNTER"
+    gate_min_s: float = 1e-4
+    gate_max_s: float = 100.0
+
+    def __post_init__(self) -> None:
+        _ascending("gate_min_s, gate_max_s", self.gate_min_s, self.gate_max_s)
+
+
+@dataclass(frozen=True, kw_only=True)
+class GaugeSettings(InstrumentSettings):
+    """A vacuum gauge."""
+
+    KIND: ClassVar = "gauge"
+    model: str = "VACUUM GAUGE"
+    serial: str = "SIM-VACUUM"
+    pressure_mbar: float = 2e-10  # until the control port says otherwise
+    noise_relative: float = 0.02  # rms of one reading
+    pressure_max_mbar: float = 1e-3  # above: over range
+
+    def __post_init__(self) -> None:
+        _ascending("0, pressure_mbar", 0.0, self.pressure_mbar)
+
+
+@dataclass(frozen=True, kw_only=True)
 class ResonatorSettings:
     """The true resonator between the drive synthesizer and the electrodes; its user knows it only within errors."""
 
@@ -138,15 +167,25 @@ def default_instruments() -> dict[str, InstrumentSettings]:
         level_resolution=1e-5,
         accuracy_absolute_v=1e-4,
     )
-    return {"rf": RfSourceSettings(), "dc": DcSupplySettings(), "tickle": tickle}
+    return {
+        "rf": RfSourceSettings(),
+        "dc": DcSupplySettings(),
+        "tickle": tickle,
+        "counter": PhotonCounterSettings(),
+        "vacuum": GaugeSettings(),
+    }
 
 
 @dataclass(frozen=True, kw_only=True)
 class RackSettings:
-    """Instruments by name, in the order of their ports, and the resonator on one of the RF sources."""
+    """Instruments by name, in the order of their ports, the resonator on one of the RF sources, and what ion may come.
+
+    ``ion`` None: there is never an ion, nor light.
+    """
 
     instruments: Mapping[str, InstrumentSettings] = field(default_factory=default_instruments)
     resonator: ResonatorSettings = field(default_factory=ResonatorSettings)
+    ion: IonSettings | None = field(default_factory=IonSettings)
     control_port: int = 0
 
     def __post_init__(self) -> None:
@@ -156,89 +195,3 @@ class RackSettings:
                 f"resonator.instrument = {self.resonator.instrument!r}: expected the name of an RF source, one of "
                 f"{[name for name, one in self.instruments.items() if isinstance(one, RfSourceSettings)]}"
             )
-
-
-KINDS: Mapping[str, type[InstrumentSettings]] = {one.KIND: one for one in (RfSourceSettings, DcSupplySettings)}
-
-
-def load(path: Path) -> RackSettings:
-    """The settings of a TOML or JSON file (by its suffix). Every mistake is one `SettingsError`."""
-    try:
-        text = path.read_text(encoding="utf-8")
-        data = json.loads(text) if path.suffix == ".json" else tomllib.loads(text)
-    except OSError as error:
-        raise SettingsError(f"{path}: cannot be read ({error.strerror}); no rack was started") from error
-    except ValueError as error:  # both decoders and UTF-8
-        raise SettingsError(f"{path}: {error}; no rack was started") from error
-    try:
-        return _rack(data)
-    except SettingsError as error:
-        raise SettingsError(f"{path}: {error}; no rack was started") from None
-
-
-def _rack(data: object) -> RackSettings:
-    table = dict(_table(data, "the file"))
-    if "instruments" in table:
-        table["instruments"] = {
-            name: _instrument(_table(one, f"instruments.{name}"), f"instruments.{name}")
-            for name, one in _table(table["instruments"], "instruments").items()
-        }
-    return _build(RackSettings, table, "")
-
-
-def _instrument(table: Mapping[str, Any], where: str) -> InstrumentSettings:
-    kind = table.get("kind")
-    if not isinstance(kind, str) or kind not in KINDS:
-        raise SettingsError(f"{where}.kind = {kind!r}: expected one of {', '.join(KINDS)}")
-    return _build(KINDS[kind], {key: value for key, value in table.items() if key != "kind"}, where)
-
-
-def _build(record: type[T], table: Mapping[str, Any], where: str) -> T:
-    hints = get_type_hints(record)
-    known = {one.name for one in fields(record)}  # type: ignore[arg-type]
-    for key in table:
-        if key not in known:
-            raise SettingsError(f"{_join(where, key)}: unknown; expected one of {', '.join(sorted(known))}")
-    values = {key: _value(hints[key], value, _join(where, key)) for key, value in table.items()}
-    try:
-        return record(**values)
-    except SettingsError as error:
-        raise SettingsError(f"{where}: {error}" if where else str(error)) from None
-
-
-def _value(hint: Any, value: Any, where: str) -> Any:
-    """``value`` as the type ``hint`` asks for."""
-    origin, inner = get_origin(hint), get_args(hint)
-    if is_dataclass(hint) and isinstance(hint, type):
-        return value if isinstance(value, hint) else _build(hint, _table(value, where), where)
-    if origin is Literal and value in inner:
-        return value
-    if origin is tuple and isinstance(value, list):
-        return tuple(_value(inner[0], one, f"{where}[{index}]") for index, one in enumerate(value))
-    if origin is Mapping:
-        return {_key(inner[0], key, where): _value(inner[1], one, where) for key, one in _table(value, where).items()}
-    if origin in (Union, UnionType) and any(isinstance(value, option) for option in inner):
-        return value
-    if hint is float and isinstance(value, int | float) and not isinstance(value, bool):
-        return float(value)
-    if isinstance(hint, type) and origin is None and type(value) is hint:
-        return value
-    expected = ", ".join(map(repr, inner)) if origin is Literal else getattr(hint, "__name__", str(hint))
-    raise SettingsError(f"{where} = {value!r}: expected {expected}")
-
-
-def _key(hint: Any, key: str, where: str) -> Any:
-    try:
-        return hint(key)
-    except ValueError:
-        raise SettingsError(f"{where}: key {key!r}: expected {hint.__name__}") from None
-
-
-def _table(value: Any, where: str) -> Mapping[str, Any]:
-    if not isinstance(value, Mapping):
-        raise SettingsError(f"{where} = {value!r}: expected a table")
-    return value
-
-
-def _join(where: str, key: str) -> str:
-    return f"{where}.{key}" if where else key

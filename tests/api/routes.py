@@ -17,6 +17,9 @@ class Route(NamedTuple):
 
 
 WHY = "a test"
+PAST = "2020-01-01T00:00:00Z"
+"""Refused, but only after the role was found to be enough: the trap of these tests stays everybody's."""
+
 ROUTES = [
     Route("GET", "/v1/health", None),
     Route("GET", "/v1/trap", "read"),
@@ -31,6 +34,15 @@ ROUTES = [
     Route("POST", "/v1/ions", "operate", {"presence": "none", "why": WHY}),
     Route("POST", "/v1/off", "operate", {}),
     Route("POST", "/v1/stop", "operate", {}),
+    Route("POST", "/v1/scans", "operate", {"scan": "nowhere"}),
+    Route("GET", "/v1/scans", "read"),
+    Route("GET", "/v1/scans/{seq}", "read"),
+    Route("GET", "/v1/frequencies", "read"),
+    Route("GET", "/v1/due", "read"),
+    Route("POST", "/v1/claim", "operate", {"why": WHY, "until": PAST}),
+    Route("POST", "/v1/release", "operate", {}),
+    Route("POST", "/v1/pause", "operate", {"why": WHY, "until": PAST}),
+    Route("POST", "/v1/resume", "operate", {}),
     Route("GET", "/v1/entries", "read"),
     Route("GET", "/v1/entries/{seq}", "read"),
     Route("GET", "/v1/setpoints", "read"),

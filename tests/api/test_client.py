@@ -184,13 +184,15 @@ def test_waiting_ends_when_the_daemon_was_started_anew() -> None:
         wait_result(iter([entry(10, "start")]), 5, None, dict)
 
 
+@pytest.mark.parametrize("activity", ["moving", "scanning"])
 @pytest.mark.parametrize(
-    ("moving", "unwritten", "ended"), [(None, 2, True), (4, 2, True), (5, 2, False), (None, 0, False)]
+    ("under_way", "unwritten", "ended"), [(None, 2, True), (4, 2, True), (5, 2, False), (None, 0, False)]
 )
 def test_a_silent_stream_is_waited_on_unless_the_end_cannot_be_written(
-    moving: int | None, unwritten: int, ended: bool
+    activity: str, under_way: int | None, unwritten: int, ended: bool
 ) -> None:
-    status = {"situation": {"moving": moving and {"request": moving}, "unwritten": unwritten}}
+    situation = {"moving": None, "scanning": None, activity: under_way and {"request": under_way}}
+    status = {"situation": {**situation, "unwritten": unwritten}}
     entries = [None, entry(10, "result", request=5, state="done")]
     if ended:
         with pytest.raises(RecordUnwritable, match="its end cannot be written"):
@@ -208,7 +210,7 @@ def test_a_move_over_which_the_disk_dies_is_not_waited_for_forever(tmp_path: Pat
         trap.switch_on()
         desk = trap.daemon.controller._desk
         desk.record = disk = DeadDisk(desk.record)
-        with pytest.raises(RecordUnwritable, match="the move has ended"):
+        with pytest.raises(RecordUnwritable, match="it has ended"):
             trap.client.set({"endcaps": 800.0}, why="a long way", progress=kill_disk)
         disk.dead = False
 

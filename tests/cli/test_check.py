@@ -19,6 +19,20 @@ def test_a_good_file_is_explained(file: Path) -> None:
         assert words in ended.out
 
 
+def test_scans_and_schedule_are_explained(tmp_path: Path) -> None:
+    file = traps.write(tmp_path, traps.NORTH_BENCH + traps.SCANS)
+    out = trapd(f"check {file}").out
+    scan = next(line for line in out.splitlines() if line.startswith("x  ")).split("  ")
+    cells = [cell.strip() for cell in scan if cell]
+    assert cells == ["x", "x of what is held", "0.5 mV", "200 kHz", "2 kHz", "20 ms", "50 Hz", "12", "5 %"]
+    assert "tickle at most 20 mV, none below 500 /s counted" in out
+    assert "*/30 * * * *" in out
+    answer = trapd(f"check {file} --json").json
+    assert answer["scans"]["x"]["tickle_v"] == 0.5e-3
+    assert answer["counter"]["floor_per_s"] == 500.0
+    assert answer["schedule"] == [{"name": "x", "scan": "x", "cron": "*/30 * * * *"}]
+
+
 def test_a_mass_is_that_of_the_tables_less_the_electron(file: Path) -> None:
     """AME2020: 40Ca 39.96259085 u; the electron 0.00054858 u (CODATA) [mem]."""
     mass_kg = trapd(f"check {file} --json").json["species"]["40Ca+"]["mass_kg"]

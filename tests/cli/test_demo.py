@@ -52,10 +52,13 @@ def test_the_demo_shows_a_ramp_a_refusal_and_a_proof_and_leaves_nothing_but_its_
     assert ran.returncode == 0, ran.stderr
     for words in (
         "$ trapd on --why 'start of the day'\ndone  ",
-        "$ trapd ions 40Ca+=2 --why 'two on the camera'\nnoted  held: 2 40Ca+",
+        "$ trapd ions 40Ca+=1 --why 'one on the camera'\nnoted  held: 1 40Ca+",
         "$ trapd set endcaps=200V --why 'stiffer along z'\ndone  endcaps 200 V",
         "$ trapd set drive.amplitude=100V --why 'less heating'\nrefused  nothing was sent",
         "    trapd set drive.amplitude=",
+        "$ trapd scan x --why 'first of the day'\npass 1 of 12: f = 2.1",
+        "\nfound  2.1",
+        "x: x of 40Ca+  2.0992 MHz ± 8.9 kHz  2.1",
         "whole  ",
         f"export TRAPD_AT={folder}/trap.toml",
         f"record --file {folder}/trapd.sqlite",
@@ -65,6 +68,7 @@ def test_the_demo_shows_a_ramp_a_refusal_and_a_proof_and_leaves_nothing_but_its_
     with Reader.open(folder / "trapd.sqlite") as reader:
         assert reader.entries(newest=True, limit=1)[0].kind == "stop"
         assert reader.refusals()[0].why == "less heating"
+        assert next(one.why for one in reader.secular_frequencies()) == "first of the day"
     assert processes_about(folder) == []
 
 
@@ -95,6 +99,6 @@ def test_the_demo_does_not_write_over_somebody_s_trap_file(tmp_path: Path) -> No
 
 def test_the_demo_s_folder_can_be_used_again(tmp_path: Path) -> None:
     folder = Folder.make(tmp_path / "demo")
-    folder.write_trap_file({"rf": 40001, "dc": 40002})
+    folder.write_trap_file({"rf": 40001, "dc": 40002, "tickle": 40003, "counter": 40004})
     again = Folder.make(tmp_path / "demo")
     assert "::40002::" in again.trap_file.read_text()

@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
+import time
 from datetime import UTC, datetime
 from typing import Any
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from trapd.cli.amounts import amount, assignment, duration, ends_of
+from trapd.cli.amounts import amount, assignment, duration, ends_of, hertz, rate, with_uncertainty
 from trapd.cli.entries import sentence
 from trapd.cli.status import state_sentence
-from trapd.cli.words import read_contents, read_moment
+from trapd.cli.words import read_contents, read_moment, read_until, utc
 from trapd.config.quantity import parse_assignments
 from trapd.errors import BadRequest
 from trapd.setpoint import AMPLITUDE, FREQUENCY, Contents
@@ -37,11 +38,51 @@ def test_amounts_have_their_unit(value: float | None, unit: str, words: str) -> 
     assert amount(value, unit) == words
 
 
+@pytest.mark.parametrize(
+    ("value_hz", "uncertainty_hz", "words"),
+    [
+        (2_155_021.3, 48.0, "2.155021 MHz ± 48 Hz"),
+        (2_155_021.3, 9.96, "2.155021 MHz ± 10 Hz"),
+        (2_155_021.3, 0.84, "2.15502130 MHz ± 0.84 Hz"),
+        (2_155_021.3, 12_345.0, "2.155 MHz ± 12 kHz"),
+        (825_261.0, 120.0, "825.26 kHz ± 120 Hz"),
+        (412.3, 3.0, "412.3 Hz ± 3 Hz"),
+        (825_261.0, 0.0, "825.261 kHz"),
+    ],
+)
+def test_a_frequency_has_as_many_digits_as_its_uncertainty_leaves_it(
+    value_hz: float, uncertainty_hz: float, words: str
+) -> None:
+    """Two digits of uncertainty, as the GUM has it (JCGM 100:2008, 7.2.6) [mem]."""
+    assert with_uncertainty(value_hz, uncertainty_hz) == words
+
+
+@given(st.floats(min_value=1e2, max_value=1e8), st.floats(min_value=1e-3, max_value=1e6))
+def test_a_frequency_is_never_rounded_by_more_than_a_tenth_of_its_uncertainty(
+    value_hz: float, uncertainty_hz: float
+) -> None:
+    shown, unit = with_uncertainty(value_hz, uncertainty_hz).split(" ± ")[0].split()
+    factor = {"Hz": 1.0, "kHz": 1e3, "MHz": 1e6}[unit]
+    assert abs(float(shown) * factor - value_hz) <= 0.051 * uncertainty_hz + 1e-9 * value_hz
+
+
+@pytest.mark.parametrize(
+    ("value_hz", "words"), [(21.4, "+21.4 Hz"), (-1234.0, "-1.23 kHz"), (999.6, "+1 kHz"), (0.0, "+0 Hz")]
+)
+def test_a_difference_has_its_sign_and_no_exponent(value_hz: float, words: str) -> None:
+    assert hertz(value_hz, signed=True) == words
+
+
+def test_a_rate_can_be_read() -> None:
+    assert rate(12_345.4) == "12 345 /s"
+
+
 @pytest.mark.parametrize(("seconds", "words"), [(0.003, "3 ms"), (0.8, "0.8 s"), (42.2, "42 s"), (200.0, "3 min 20 s")])
 def test_durations_are_short(seconds: float, words: str) -> None:
     assert duration(seconds) == words
 
 
+@settings(deadline=None)
 @given(nearest=VOLTS, beyond=VOLTS)
 def test_what_is_pasted_lies_on_the_allowed_side_of_the_nearest_value(nearest: float, beyond: float) -> None:
     """Allowed is everything away from what was asked; a part in 1e8 is given up for a short number."""
@@ -104,9 +145,55 @@ def test_moments_that_are_none_are_refused(text: str) -> None:
         read_moment(text, NOON)
 
 
+@pytest.mark.parametrize(
+    ("text", "moment"),
+    [
+        ("30min", datetime(2026, 3, 1, 12, 30, tzinfo=UTC)),
+        ("2d", datetime(2026, 3, 3, 12, tzinfo=UTC)),
+        ("2026-03-01T18:00Z", datetime(2026, 3, 1, 18, tzinfo=UTC)),
+        ("2026-03-01T18:00+02:00", datetime(2026, 3, 1, 16, tzinfo=UTC)),
+        ("18:00", datetime(2026, 3, 1, 17, tzinfo=UTC)),
+        ("9:30", datetime(2026, 3, 2, 8, 30, tzinfo=UTC)),
+        ("13:00", datetime(2026, 3, 2, 12, tzinfo=UTC)),
+    ],
+)
+def test_an_end_is_read_and_a_time_of_day_is_the_next_one_here(
+    monkeypatch: pytest.MonkeyPatch, text: str, moment: datetime
+) -> None:
+    monkeypatch.setenv("TZ", "UTC-1")  # POSIX: one hour east of Greenwich
+    time.tzset()
+    try:
+        assert read_until(text, NOON) == moment
+    finally:
+        monkeypatch.undo()
+        time.tzset()
+
+
+@pytest.mark.parametrize("text", ["", "soon", "25:00", "12:60", "-1h", "2026-13-01"])
+def test_an_end_that_is_none_is_refused(text: str) -> None:
+    with pytest.raises(BadRequest, match="expected a while such as 30min"):
+        read_until(text, NOON)
+
+
+@pytest.mark.parametrize("text", ["2026-03-01T12:00:00Z", "2026-03-01T11:00Z", "0s"])
+def test_an_end_that_has_passed_is_refused(text: str) -> None:
+    with pytest.raises(BadRequest, match="has passed"):
+        read_until(text, NOON)
+
+
+def test_a_time_is_shown_in_utc() -> None:
+    assert utc(1_772_366_400_000_000) == "2026-03-01 12:00:00 UTC"
+
+
 def situation(**changes: Any) -> dict[str, Any]:
     held = {"presence": "held", "ions": {"40Ca+": 2}, "incoming": []}
-    return {"outputs": {"drive.output": True}, "contents": held, "moving": None, "off_pending": [], **changes}
+    return {
+        "outputs": {"drive.output": True},
+        "contents": held,
+        "moving": None,
+        "scanning": None,
+        "off_pending": [],
+    } | changes
 
 
 @pytest.mark.parametrize(
@@ -128,6 +215,19 @@ def situation(**changes: Any) -> dict[str, Any]:
         (
             {"contents": {"presence": "unknown", "ions": {}, "incoming": []}},
             "On; what is in the trap is unknown, every species of the file guarded.",
+        ),
+        (
+            {
+                "scanning": {
+                    "scan": "radial",
+                    "mode": "x",
+                    "species": "40Ca+",
+                    "author": "ada",
+                    "pass_number": 3,
+                    "passes": 12,
+                }
+            },
+            "Scanning radial (x of 40Ca+) for ada, pass 3 of 12; holding 2 40Ca+.",
         ),
         ({"off_pending": ["dc"]}, "Off was asked for and is not confirmed by dc."),
     ],

@@ -10,13 +10,27 @@ import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
-from tests.traps import NORTH_BENCH, RING, TENSOR, write
+from tests.traps import NORTH_BENCH, RING, SCANS, TENSOR, write
 from trapd.config.build import guard_of
 from trapd.config.digest import as_data
 from trapd.config.read import parse, read
 from trapd.errors import ConfigError
 
 FILE = Path("bench.toml")
+SCANNED = NORTH_BENCH + SCANS
+OFFLINE = f"""{TENSOR}
+[tickle]
+level_max = "20 mV"
+[counter]
+floor = "500 /s"
+[scans.z]
+mode = "z"
+tickle = "5 mV"
+span = "100 Hz"
+width = "2 Hz"
+dwell = "1 s"
+target = "0.1 Hz"
+"""
 
 # what is replaced in a valid file, by what, and what the message must say
 Mistake = tuple[str, str, str, tuple[str, ...]]
@@ -67,14 +81,13 @@ MISTAKES: list[Mistake] = [
     (NORTH_BENCH, "[instruments.rf]", '[instruments."r f"]', ("instruments.r f", "letters, digits")),
     (NORTH_BENCH, "[points.work]", '[points."a=b"]', ("points.a=b", "letters, digits")),
     # later
-    (NORTH_BENCH, "[record]", "[tickle]\n[record]", ("tickle: " + LATER,)),
-    (NORTH_BENCH, "[record]", "[counter]\n[record]", ("counter: " + LATER,)),
     (NORTH_BENCH, "[record]", "[interlocks.vacuum]\n[record]", ("interlocks: " + LATER,)),
-    (NORTH_BENCH, "[record]", "[scans.x]\n[record]", ("scans: " + LATER,)),
-    (NORTH_BENCH, "[record]", "[[schedule]]\n[record]", ("schedule: " + LATER,)),
     (NORTH_BENCH, '"sine"', '"square"', ('drive.waveform = "square"', LATER)),
     (NORTH_BENCH, '"sine"', '"rotating"', ('drive.waveform = "rotating"', LATER)),
     (NORTH_BENCH, '"sine"', '"sin"', ('drive.waveform = "sin"', 'expected "sine"')),
+    (NORTH_BENCH, "[record]", "[purge]\n[record]", ("purge: " + LATER,)),
+    (NORTH_BENCH, "[record]", "[crystal]\n[record]", ("crystal: " + LATER,)),
+    (NORTH_BENCH, "[record]", "[calibrations]\n[record]", ("calibrations: " + LATER,)),
     # geometry
     (NORTH_BENCH, '"linear"', '"lineal"', ('trap.geometry = "lineal"', '"linear" or "ring" or "tensor"')),
     (NORTH_BENCH, 'r0 = "0.50 mm"', "", ("trap.r0 is missing", "a length")),
@@ -130,6 +143,57 @@ MISTAKES: list[Mistake] = [
     (NORTH_BENCH, 'driver = "scpi-dc-supply"', "", ("instruments.dc.driver is missing", "scpi-dc-supply")),
     (RING, 'instrument = "dc"', 'instrument = "rf"', ('electrodes.bias.instrument = "rf"', "the drive's")),
     (NORTH_BENCH, "channel = 3", "", ("electrodes.shim_x.channel is missing", "a channel number")),
+    (SCANNED, 'instrument = "tickle"', 'instrument = "rf"', ('tickle.instrument = "rf"', "the drive's")),
+    (SCANNED, 'instrument = "counter"', 'instrument = "tickle"', ('counter.instrument = "tickle"', "the tickle's")),
+    (SCANNED, 'instrument = "tickle"', 'instrument = "tickel"', ('tickle.instrument = "tickel"', "counter, dc, rf")),
+    (SCANNED, 'instrument = "counter"', "", ("counter.instrument is missing", "[instruments]")),
+    (SCANNED, 'instrument = "dc"', 'instrument = "counter"', ('endcaps.instrument = "counter"', "the counter's")),
+    (SCANNED, "[record]", '[instruments.x]\ndriver = "d"\nresource = "r"\n[record]', ("instruments.x: neither",)),
+    # tickle and counter
+    (SCANNED, '"20 mV"', '"0 mV"', ("tickle.level_max", "more than 0")),
+    (SCANNED, 'level_max = "20 mV"', "", ("tickle.level_max is missing", "a voltage")),
+    (SCANNED, 'level_max = "20 mV"', 'level = "20 mV"', ("tickle.level: unknown key", '"level_max"')),
+    (SCANNED, 'floor = "500 /s"', "", ("counter.floor is missing", "a rate")),
+    (SCANNED, '"500 /s"', '"500 Hz"', ('counter.floor = "500 Hz"', "a rate")),
+    (SCANNED, '"500 /s"', '"0 /s"', ("counter.floor", "more than 0")),
+    # scans
+    (OFFLINE, '[tickle]\nlevel_max = "20 mV"\n', "", ("scans: there is no [tickle]",)),
+    (OFFLINE, '[counter]\nfloor = "500 /s"\n', "", ("scans: there is no [counter]",)),
+    (SCANNED, "[scans.x]", "[scans]\nx = 1\n[scans.y]", ("scans.x = 1", "a table [scans.x]")),
+    (SCANNED, "[scans.x]", '[scans."x y"]', ("scans.x y", "letters, digits")),
+    (SCANNED, 'mode = "x"', 'mode = "w"', ('scans.x.mode = "w"', '"x" or "y" or "z"')),
+    (SCANNED, 'mode = "x"', "", ("scans.x.mode is missing",)),
+    (SCANNED, 'mode = "x"', 'mode = "x"\nspecies = "40Ca"', ('scans.x.species = "40Ca"', 'did you mean "40Ca+"')),
+    (SCANNED, 'mode = "x"', 'mode = "x"\nmethod = "uniform"', ("scans.x.method: unknown key",)),
+    (SCANNED, '"0.5 mV"', '"21 mV"', ('scans.x.tickle = "21 mV"', "at most 0.02 V", "level_max of [tickle]")),
+    (SCANNED, '"0.5 mV"', '"0 mV"', ("scans.x.tickle", "more than 0")),
+    (SCANNED, '"20 ms"', '"0.9 ms"', ("scans.x.dwell", "at least 0.001")),
+    (SCANNED, '"20 ms"', '"10.1 s"', ("scans.x.dwell", "at most 10 s")),
+    (SCANNED, '"20 ms"', '"20 kHz"', ("scans.x.dwell", "a time")),
+    (SCANNED, '"50 Hz"', '"0 Hz"', ("scans.x.target", "more than 0")),
+    (SCANNED, 'target = "50 Hz"', "", ("scans.x.target is missing", "a frequency")),
+    (SCANNED, '"200 kHz"', '"4 kHz"', ('scans.x.span = "4 kHz"', "more than 2 times the width, 4000 Hz")),
+    (SCANNED, '"50 Hz"', '"50 Hz"\nwidth = "100 kHz"', ("scans.x.span", "2 times the width, 200000 Hz")),
+    (SCANNED, '"50 Hz"', '"50 Hz"\nwidth = "0 Hz"', ("scans.x.width", "more than 0")),
+    (SCANNED, '"50 Hz"', '"50 Hz"\npasses = 1', ("scans.x.passes = 1", "from 2 to 1000")),
+    (SCANNED, '"50 Hz"', '"50 Hz"\npasses = 1001', ("scans.x.passes = 1001", "from 2 to 1000")),
+    (SCANNED, '"50 Hz"', '"50 Hz"\npasses = 2.5', ("scans.x.passes = 2.5", "a whole number")),
+    (SCANNED, '"50 Hz"', '"50 Hz"\nmin_contrast = 0.05', ("scans.x.min_contrast = 0.05", 'a share such as "5 %"')),
+    (SCANNED, '"50 Hz"', '"50 Hz"\nmin_contrast = "0 %"', ("scans.x.min_contrast", "more than 0")),
+    (SCANNED, '"50 Hz"', '"50 Hz"\nmodel_uncertainty = "100 %"', ("scans.x.model_uncertainty", "less than 100 %")),
+    (SCANNED, '"50 Hz"', '"50 Hz"\nmin_contrast = "100 %"', ("scans.x.min_contrast", "less than 100 %")),
+    # schedule
+    (SCANNED, 'scan = "x"', 'scan = "y"', ('schedule.y.scan = "y"', "known here: x")),
+    (SCANNED, 'scan = "x"', "", ("schedule.1.scan is missing", "the name of a scan")),
+    (SCANNED, 'cron = "*/30 * * * *"', "", ("schedule.x.cron is missing", "five fields in UTC")),
+    (SCANNED, 'scan = "x"', 'scan = "x"\nname = "at night"', ('schedule.at night.name = "at night"', "letters")),
+    (SCANNED, "[[schedule]]", "[schedule]", ("schedule = ", "at least one table [[schedule]]")),
+    (
+        SCANNED,
+        "[[schedule]]",
+        '[[schedule]]\nscan = "x"\ncron = "0 0 * * *"\n[[schedule]]',
+        ("x is in the schedule twice",),
+    ),
     # points
     (NORTH_BENCH, 'endcaps = "120 V"', 'endcap = "120 V"', ("points.work.endcap: unknown setpoint", '"endcaps"')),
     (NORTH_BENCH, 'endcaps = "120 V"', 'endcaps = "901 V"', ('points.work.endcaps = "901 V"', "0 to 900 V")),
@@ -231,7 +295,7 @@ def test_absurd_toml_is_a_config_error(text: str) -> None:
         parse(text, FILE)
 
 
-LINES = sorted({line for text in (NORTH_BENCH, RING, TENSOR) for line in text.splitlines() if line})
+LINES = sorted({line for text in (SCANNED, RING, TENSOR) for line in text.splitlines() if line})
 VALUES = st.sampled_from(
     ["-1", "nan", "1e400", "true", '""', '"0 V"', '"1 V"', "[]", "{}", "[[1]]", "1979-05-27", "0xffff"]
 )
@@ -248,8 +312,8 @@ def test_arbitrary_bytes_raise_nothing_but_a_config_error(content: bytes, tmp_pa
 
 @settings(max_examples=200, deadline=None)
 @given(
-    valid=st.sampled_from([NORTH_BENCH, RING, TENSOR]),
-    edits=st.lists(st.tuples(st.integers(0, 80), st.sampled_from(["drop", "copy", "value"]), VALUES), max_size=6),
+    valid=st.sampled_from([NORTH_BENCH, RING, TENSOR, SCANNED, OFFLINE]),
+    edits=st.lists(st.tuples(st.integers(0, 120), st.sampled_from(["drop", "copy", "value"]), VALUES), max_size=6),
     inserted=st.lists(st.sampled_from(LINES), max_size=3),
 )
 def test_a_mangled_trap_file_is_a_config_error_or_whole_enough_for_guard_and_record(

@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from tests.traps import NORTH_BENCH, write
+from tests.traps import NORTH_BENCH, SCANS, write
 from trapd.clock import Clock, SystemClock
 from trapd.config.build import guard_of
 from trapd.config.read import read
@@ -25,6 +25,11 @@ from trapd_simulated import Rack, RackSettings, Received
 
 QUICK = re.sub(r'slew = "(\d+)', lambda m: f'slew = "{int(m[1]) * 100}', NORTH_BENCH)
 """The north bench with ramps a hundred times as fast."""
+
+SCANNED = QUICK.replace('gain_uncertainty = "2 %"', 'gain_uncertainty = "0.5 %"') + SCANS.replace(
+    'span = "200 kHz"', 'span = "60 kHz"\nmodel_uncertainty = "0.1 %"'
+)
+"""It can scan as well, and knows its gain well enough for a narrow window."""
 
 HELD = Contents(presence="held", ions={"40Ca+": 2})
 ENOUGH_S = 30.0
@@ -92,7 +97,7 @@ def bench(
     with ExitStack() as stack:
         if rack is None:
             rack = stack.enter_context(Rack(settings or RackSettings(), seed=1, on_receive=on_receive))
-        path = write(folder, toml, rf=rack.ports["rf"], dc=rack.ports["dc"])
+        path = write(folder, toml, **rack.ports)
         config = read(path)
         clock = clock or SystemClock()
         record = Record.open(config.record_file, clock=clock, boot_id="test")

@@ -2,17 +2,16 @@
 
 from __future__ import annotations
 
-import sqlite3
 from collections.abc import Iterator
 from itertools import pairwise
 from pathlib import Path
 
 import pytest
 
-from tests.controller.bench import HELD, Bench, bench, is_query
+from tests.controller.bench import HELD, Bench, bench
+from tests.promises.witness import Witness
 from trapd.errors import BadRequest, Conflict, NotFound
 from trapd.record import verify
-from trapd_simulated import Received
 
 
 @pytest.fixture(scope="module")
@@ -131,28 +130,12 @@ def test_the_chain_verifies_after_all_that(holding: Bench) -> None:
 
 def test_each_intent_is_on_disk_when_the_rack_receives_its_command(tmp_path: Path) -> None:
     """Promise 2: asked by a read-only connection at the moment of reception, before the rack executes."""
-    orphans: list[str] = []
-    seen: set[int] = set()
-
-    def witness(received: Received) -> None:
-        if is_query(received.text):
-            return
-        with sqlite3.connect(f"file:{tmp_path}/north-bench.sqlite?mode=ro", uri=True) as db:
-            open_intents = db.execute(
-                "SELECT i.seq, i.instrument, i.quantity, i.level FROM intents i "
-                "LEFT JOIN outcomes o ON o.intent = i.seq WHERE o.seq IS NULL"
-            ).fetchall()
-        number = float(received.text.split(";")[0].split()[-1].replace("ON", "1").replace("OFF", "0"))
-        match = [row for row in open_intents if row[1] == received.instrument and abs(row[3] - number) < 1e-6]
-        seen.update(row[0] for row in match)
-        if not match:
-            orphans.append(received.text)
-
+    witness = Witness(tmp_path / "north-bench.sqlite")
     with bench(tmp_path, on_receive=witness) as made:
         made.switch_on()
         made.ask("set", values={"endcaps": 150.0, "drive.frequency": 21.005e6})
-        assert orphans == []
-        assert len(seen) == len(made.entries("intent")) > 150
+        assert witness.orphans == []
+        assert len(witness.intents) == len(made.entries("intent")) > 150
 
 
 def test_a_first_start_on_a_dark_trap_ends_empty_and_sends_queries_only(tmp_path: Path) -> None:

@@ -1,4 +1,4 @@
-"""Drivers that break one clause each, as a hurried author might; the key is the clause."""
+"""Drivers that break one of the clauses 1 to 16 each, as a hurried author might; the key is the clause."""
 
 from __future__ import annotations
 
@@ -173,6 +173,10 @@ class BelievesItIsOff(ScpiRfSource):
         if on or self.on:
             super().set_output(on)
         self.on = on
+
+    def start_burst(self, duration_s: float) -> None:
+        self.on = True
+        super().start_burst(duration_s)
 
 
 class MeasuresWhatIsProgrammed(ScpiRfSource):

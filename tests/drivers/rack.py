@@ -5,7 +5,15 @@ from __future__ import annotations
 from dataclasses import replace
 from pathlib import Path
 
-from trapd_simulated import DcSupplySettings, Dialect, Rack, RackSettings, RfSourceSettings
+from trapd_simulated import (
+    DcSupplySettings,
+    Dialect,
+    GaugeSettings,
+    PhotonCounterSettings,
+    Rack,
+    RackSettings,
+    RfSourceSettings,
+)
 
 HERE = Path(__file__).parent
 
@@ -18,7 +26,7 @@ _OTHER = Dialect(
     output_words=True,
     frequency_unit="KHZ",
     measures=False,
-    min_spacing_s=0.003,
+    min_spacing_s=0.002,
     reply_end="\r\n",
     error_codes={-222: 701, -113: 702},
 )
@@ -42,12 +50,16 @@ OTHER = RackSettings(
             dialect=replace(_OTHER, commands={"level": ("POWer:AMPLitude",), "output": ("SWITch",)}),
         ),
         "dc": DcSupplySettings(dialect=_OTHER),
+        "counter": PhotonCounterSettings(dialect=_OTHER),
+        "vacuum": GaugeSettings(pressure_mbar=3e-4, dialect=replace(_OTHER, pressure_unit="PA")),
     }
 )
 THIRD = RackSettings(
     instruments={
-        "rf": RfSourceSettings(frequency_resolution_hz=10.0, level_resolution=1e-3, dialect=_THIRD),
+        "rf": RfSourceSettings(frequency_resolution_hz=10.0, level_resolution=1e-3, bursts=False, dialect=_THIRD),
         "dc": DcSupplySettings(dialect=_THIRD),
+        "counter": PhotonCounterSettings(dialect=_THIRD),
+        "vacuum": GaugeSettings(dialect=replace(_THIRD, pressure_unit="TORR")),
     }
 )
 DIALECTS = {"plain": PLAIN, str(HERE / "other.toml"): OTHER, str(HERE / "third.toml"): THIRD}

@@ -9,7 +9,7 @@ from collections.abc import Iterator
 import pytest
 
 from tests.drivers.rack import resource
-from trapd_drivers.absent import AbsentDcSupply, AbsentRfSource, open_or_absent
+from trapd_drivers.absent import AbsentDcSupply, AbsentGauge, AbsentPhotonCounter, AbsentRfSource, open_or_absent
 from trapd_drivers.errors import OutOfRange, ProfileError, Unreachable
 from trapd_drivers.interfaces import DcSupply, Instrument, RfSource
 from trapd_drivers.scpi.rf_source import ScpiRfSource
@@ -21,11 +21,18 @@ def rack() -> Iterator[Rack]:
     with Rack() as rack:
         rack.power_off("rf")
         rack.power_off("dc")
+        rack.power_off("counter")
+        rack.power_off("vacuum")
         yield rack
 
 
 def opened(rack: Rack, instrument: str) -> Instrument:
-    driver = {"rf": "scpi-rf-source", "dc": "scpi-dc-supply"}[instrument]
+    driver = {
+        "rf": "scpi-rf-source",
+        "dc": "scpi-dc-supply",
+        "counter": "scpi-photon-counter",
+        "vacuum": "scpi-gauge",
+    }[instrument]
     return open_or_absent(driver, resource(rack, instrument), timeout_s=0.3)
 
 
@@ -65,6 +72,32 @@ def test_the_scales_are_the_profiles_at_first_and_the_instruments_then(rack: Rac
     rf.read_identity()
     dc.read_identity()
     assert (rf.level.high, rf.frequency.high, dc.voltage(1).high) == (12.5, 60e6, 1000.0)
+
+
+def test_bursts_counts_and_readings_go_to_the_instrument_once_it_is_there(rack: Rack) -> None:
+    rf, counter, vacuum = opened(rack, "rf"), opened(rack, "counter"), opened(rack, "vacuum")
+    assert isinstance(rf, AbsentRfSource)
+    assert isinstance(counter, AbsentPhotonCounter)
+    assert isinstance(vacuum, AbsentGauge)
+    assert rf.burst is not None
+    assert (rf.burst.high, counter.gate.high, counter.gate.resolution) == (math.inf, math.inf, 1e-6)
+    for call in (
+        lambda: rf.start_burst(1.0),
+        rf.read_burst,
+        counter.read_count,
+        vacuum.read_value,
+        lambda: vacuum.unit,
+    ):
+        with pytest.raises(Unreachable):
+            call()
+    for name in ("rf", "counter", "vacuum"):
+        rack.power_on(name)
+    rf.start_burst(1.0)
+    counter.start_count(0.05)
+    assert rf.read_burst()
+    assert counter.read_count() is None
+    assert (vacuum.unit, vacuum.read_value()) == ("Pa", pytest.approx(2e-8, rel=0.15))
+    assert (rf.burst.high, counter.gate.high) == (1000.0, 100.0)
 
 
 def test_garbage_at_the_start_is_no_reason_to_give_the_instrument_up(rack: Rack) -> None:

@@ -13,6 +13,8 @@ from trapd_drivers.errors import ProfileError
 from trapd_drivers.profile import load_profile, shipped_profiles
 from trapd_drivers.quantity import Unit
 from trapd_drivers.scpi.dc_supply import ScpiDcSupply
+from trapd_drivers.scpi.gauge import ScpiGauge
+from trapd_drivers.scpi.photon_counter import ScpiPhotonCounter
 from trapd_drivers.scpi.rf_source import ScpiRfSource
 
 PLAIN = Path(str(load_profile.__code__.co_filename)).parent / "profiles" / "plain.toml"
@@ -33,11 +35,25 @@ OTHER = str(HERE / "other.toml")
         (Unit(name="mV"), -5.0, -0.005),
         (Unit(name="kHz"), 2.5, 2500.0),
         (Unit(name="GHz"), 1.0, 1e9),
+        (Unit(name="ms"), 250.0, 0.25),
+        (Unit(name="us"), 10.0, 1e-5),
+        (Unit(name="mbar"), 1.0, 100.0),  # SI Brochure, 9th edition, table 8 and appendix [mem]
+        (Unit(name="Torr"), 760.0, 101325.0),  # the definition of the standard atmosphere
+        (Unit(name="hPa"), 1013.25, 101325.0),
+        (Unit(name="degC"), 0.01, 273.16),  # the triple point of water
+        (Unit(name="uW"), 5.0, 5e-6),
     ],
 )
 def test_a_number_on_the_wire_is_so_many_volts_or_hertz(unit: Unit, number: float, volts: float) -> None:
     assert unit.to_si(number) == pytest.approx(volts, rel=1e-6)
     assert unit.from_si(volts) == pytest.approx(number, rel=1e-6, abs=1e-5)
+
+
+@pytest.mark.parametrize(
+    ("unit", "si"), [("mbar", "Pa"), ("Torr", "Pa"), ("degC", "K"), ("K", "K"), ("mW", "W"), ("mV", "V"), ("mA", "A")]
+)
+def test_a_gauge_reads_in_the_si_unit(unit: str, si: str) -> None:
+    assert Unit(name=unit).si == si
 
 
 def test_the_scales_that_a_profile_states_need_no_instrument() -> None:
@@ -88,6 +104,24 @@ def test_a_level_in_decibel_is_quantised_in_decibel() -> None:
         ("resolution = 1.0", "resolution = 0", "expected a number above 0"),
         ('low = "FREQ? MIN"\nhigh = "FREQ? MAX"', "low = 2.0\nhigh = 1.0", "expected a number above low = 2"),
         ("[wire]", "[wire", "not TOML"),
+        ('start = "OUTP ON;:INIT"', "", "rf_source.burst.start: missing; expected a string"),
+        ('set = "ABOR;:BURS:STAT ON;:BURS:DUR {value}"', 'set = "BURS:STAT ON"', "rf_source.burst.set = "),
+        ("[rf_source.burst.running]", "[rf_source.burst.runs]", "rf_source.burst.running: missing; expected a table"),
+        ('query = "BURS:ACT?"', "", "rf_source.burst.running.query: missing; expected a string"),
+        ('off_words = ["0"]', 'off_words = ["1"]', "rf_source.burst.running.off_words"),
+        ("bits = [4]", "bits = 16", "photon_counter.gate.running.bits = 16; expected a list of whole numbers"),
+        ("bits = [4]", "bits = []", "expected bit numbers from 0"),
+        ("bits = [4]", "bits = [-1]", "expected bit numbers from 0"),
+        ("bits = [4]", 'bits = [4]\non_words = ["16"]', "photon_counter.gate.running.on_words: unknown key"),
+        ("[photon_counter.count]", "[photon_counter.counts]", "photon_counter.count: missing; expected a table"),
+        (
+            "[photon_counter.gate]",
+            "[photon_counter.gates]",
+            "photon_counter.gate.unit: missing; expected one of s, ms, us",
+        ),
+        ('query = "FETC?"', 'query = "FETC?"\nunit = "counts"', "photon_counter.count.unit: unknown key"),
+        ('unit = "mbar"', 'unit = "bar"', "gauge.unit = 'bar'; expected one of Pa, hPa, mbar, Torr"),
+        ('query = "MEAS:PRES?"', 'query = "*RST;:MEAS:PRES?"', "*RST, which is never sent"),
         ("[rf_source.output]", "[rf_source.outputs]", "rf_source.output: missing; expected a table"),
     ],
 )
@@ -118,6 +152,22 @@ def test_a_profile_without_the_part_for_a_driver_says_so(tmp_path: Path) -> None
     assert ScpiRfSource.scales(str(file))
     with pytest.raises(ProfileError, match=r"has no \[dc_supply\]"):
         ScpiDcSupply.open("TCPIP::127.0.0.1::1::SOCKET", profile=str(file))
+
+
+@pytest.mark.parametrize(
+    ("driver", "table"), [(ScpiPhotonCounter, "[photon_counter.gate]"), (ScpiGauge, "[gauge]"), (ScpiRfSource, None)]
+)
+def test_a_profile_needs_only_the_table_of_its_instrument(
+    tmp_path: Path, driver: type[ScpiPhotonCounter | ScpiGauge | ScpiRfSource], table: str | None
+) -> None:
+    text = PLAIN.read_text(encoding="utf-8")
+    file = tmp_path / "one.toml"
+    part = text[text.index(table or "[rf_source]") :]
+    end = {"[photon_counter.gate]": "[gauge]", None: "[dc_supply]"}.get(table)
+    file.write_text(part.split(end)[0] if end else part, encoding="utf-8")
+    assert set(driver.scales(str(file))) == set(driver.scales("plain"))
+    with pytest.raises(ProfileError, match=r"has no \[dc_supply\]"):
+        ScpiDcSupply.scales(str(file))
 
 
 def test_plain_is_shipped_and_shows_every_key_that_any_profile_uses() -> None:

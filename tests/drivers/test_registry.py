@@ -10,6 +10,8 @@ import pytest
 from trapd_drivers import registry
 from trapd_drivers.errors import ProfileError
 from trapd_drivers.scpi.dc_supply import ScpiDcSupply
+from trapd_drivers.scpi.gauge import ScpiGauge
+from trapd_drivers.scpi.photon_counter import ScpiPhotonCounter
 from trapd_drivers.scpi.rf_source import ScpiRfSource
 
 RF = "trapd_drivers.scpi.rf_source:ScpiRfSource"
@@ -28,7 +30,12 @@ def register(monkeypatch: pytest.MonkeyPatch) -> Callable[..., None]:
 
 
 def test_the_shipped_drivers_are_registered() -> None:
-    shipped: dict[str, object] = {"scpi-rf-source": ScpiRfSource, "scpi-dc-supply": ScpiDcSupply}
+    shipped: dict[str, object] = {
+        "scpi-rf-source": ScpiRfSource,
+        "scpi-dc-supply": ScpiDcSupply,
+        "scpi-photon-counter": ScpiPhotonCounter,
+        "scpi-gauge": ScpiGauge,
+    }
     assert {name: registry.driver_class(name) for name in shipped} == shipped
 
 
@@ -54,5 +61,7 @@ def test_an_entry_that_is_no_instrument_class_says_so(register: Callable[..., No
 
 
 def test_scales_come_by_name_without_an_instrument() -> None:
-    assert set(registry.scales_of("scpi-rf-source")) == {("frequency", 0), ("level", 0)}
+    assert set(registry.scales_of("scpi-rf-source")) == {("frequency", 0), ("level", 0), ("burst", 0)}
     assert set(registry.scales_of("scpi-dc-supply", "plain")) == {("voltage", channel) for channel in (1, 2, 3, 4)}
+    assert set(registry.scales_of("scpi-photon-counter")) == {("gate", 0)}
+    assert registry.scales_of("scpi-gauge") == {}

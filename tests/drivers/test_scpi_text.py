@@ -13,6 +13,8 @@ from tests.drivers.rack import PLAIN, resource
 from trapd_drivers.errors import Malformed
 from trapd_drivers.scpi import answers
 from trapd_drivers.scpi.dc_supply import ScpiDcSupply
+from trapd_drivers.scpi.gauge import ScpiGauge
+from trapd_drivers.scpi.photon_counter import ScpiPhotonCounter
 from trapd_drivers.scpi.rf_source import ScpiRfSource
 from trapd_simulated import Rack
 
@@ -27,7 +29,10 @@ MESSAGE = re.compile(rf"{UNIT}(?:;{UNIT})*")
 # SCPI-1999 volume 2: the long forms of the mnemonics that plain sends.
 LONG_FORMS = (
     *("SYSTem", "ERRor", "FREQuency", "VOLTage", "OUTPut", "MEASure", "PROTection", "TRIPped", "SOURce"),
-    *("MINimum", "MAXimum", "AC", "ON", "OFF"),
+    *("MINimum", "MAXimum", "AC", "ON", "OFF", "STATe", "INITiate", "ABORt", "FETCh"),
+    *("STATus", "OPERation", "CONDition", "PRESsure", "TIME", "GATE"),
+    # Of an instrument's own, as SCPI-1999 lets it: volume 1, 6.2.1 holds for them too.
+    *("BURSt", "DURation", "ACTive", "TOTalize"),
 )
 
 
@@ -39,7 +44,7 @@ def short_form(long: str) -> str:
 
 @pytest.fixture(scope="module")
 def sent() -> list[str]:
-    """Everything that both drivers send in the plain dialect."""
+    """Everything that the drivers send in the plain dialect."""
     with Rack(PLAIN) as rack:
         rf, dc = ScpiRfSource.open(resource(rack, "rf")), ScpiDcSupply.open(resource(rack, "dc"))
         rf.set_frequency_hz(21.000123e6)
@@ -54,6 +59,13 @@ def sent() -> list[str]:
         dc.read_status()
         for ask in (dc.read_voltage_v, dc.measure_voltage_v, dc.read_output):
             ask(2)
+        counter = ScpiPhotonCounter.open(resource(rack, "counter"))
+        rf.start_burst(0.0123)
+        rf.read_burst()
+        counter.start_count(1e-3)
+        while counter.read_count() is None:
+            pass
+        ScpiGauge.open(resource(rack, "vacuum")).read_value()
         return [one.text for one in rack.received]
 
 
@@ -80,7 +92,7 @@ def test_a_compound_message_returns_to_the_root_before_the_error_query(sent: lis
     """SCPI-1999 volume 1, 6.2.4: a unit after ``;`` continues in the path of the one before unless ``:`` leads it."""
     compounds = [text for text in sent if ";" in text]
     assert compounds
-    assert all(re.fullmatch(r"[^;]+;:SYST:ERR\?", text) for text in compounds)
+    assert all(re.fullmatch(r"[^;]+(;:[^;]+)*;:SYST:ERR\?", text) for text in compounds)
 
 
 def test_nothing_ever_resets_the_instrument(sent: list[str]) -> None:
@@ -91,6 +103,8 @@ def test_values_are_sent_with_the_digits_of_the_resolution(sent: list[str]) -> N
     assert "FREQ 21000123.0;:SYST:ERR?" in sent
     assert "VOLT 7.1234;:SYST:ERR?" in sent
     assert "SOUR2:VOLT -3.25;:SYST:ERR?" in sent
+    assert "ABOR;:BURS:STAT ON;:BURS:DUR 0.012300;:SYST:ERR?" in sent
+    assert "ABOR;:TOT:GATE:TIME 0.001000;:SYST:ERR?" in sent
 
 
 @pytest.mark.parametrize(
@@ -125,6 +139,30 @@ def test_what_is_no_number_is_malformed(text: str) -> None:
     """The last three are SCPI-1999 volume 1, 7.2.1.4 and 7.2.1.5: not a number, infinity, negative infinity."""
     with pytest.raises(Malformed):
         answers.number(text)
+
+
+@pytest.mark.parametrize(
+    ("text", "value"),
+    # A count or a register in NR1, and as instruments that know only NR2 or NR3 write it: 8.7.2 to 8.7.4.
+    [("0", 0), ("16", 16), ("+1024", 1024), ("007", 7), ("12.0", 12), ("1.23E+03", 1230)],
+)
+def test_whole_numbers_are_read(text: str, value: int) -> None:
+    found = answers.whole_number(text)
+    assert (type(found), found) == (int, value)
+
+
+@pytest.mark.parametrize("text", ["-1", "12.5", "1.23E+01", "", "9.91E+37", "NAN", "#H1F", "12 counts", "1,2", "1e-3"])
+def test_a_count_that_is_no_whole_number_from_0_is_malformed(text: str) -> None:
+    with pytest.raises(Malformed):
+        answers.whole_number(text)
+
+
+@pytest.mark.parametrize("text", ["9.91E37", "9.91E+37", "9.9E37", "-9.9E37", "+9.9000000E+37"])
+def test_not_a_number_and_infinity_are_known(text: str) -> None:
+    """SCPI-1999 volume 1, 7.2.1.4 and 7.2.1.5."""
+    assert answers.is_no_number(text)
+    assert not answers.is_no_number("1E-9")
+    assert not answers.is_no_number("NAN")
 
 
 def test_an_identity_has_four_fields() -> None:

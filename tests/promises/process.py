@@ -37,7 +37,7 @@ class Serving:
         text = text.replace("[server]", f'[server]\nsocket = "{self.socket}"')
         if self.record_folder is not None:
             text = text.replace('file = "north-bench.sqlite"', f'file = "{self.record_folder}/north-bench.sqlite"')
-        self.trap_file = write(self.folder, text, rf=self.rack.ports["rf"], dc=self.rack.ports["dc"])
+        self.trap_file = write(self.folder, text, **self.rack.ports)
 
     @property
     def socket(self) -> Path:

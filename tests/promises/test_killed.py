@@ -17,36 +17,12 @@ import pytest
 
 from tests.controller.bench import is_query
 from tests.promises.process import Serving, asked_for, wait_until_empty
+from tests.promises.witness import Witness
 from trapd.errors import TrapdError
 from trapd.record import verify
-from trapd_simulated import Rack, Received
+from trapd_simulated import Rack
 
 KILLS = asked_for("TRAPD_KILLS", 10)
-
-
-class Witness:
-    """At the moment the rack receives a command, before it executes it, a read-only connection looks for its intent."""
-
-    def __init__(self, record: Path) -> None:
-        self._record = record
-        self.commands = 0
-        self.orphans: list[str] = []
-
-    def __call__(self, received: Received) -> None:
-        if is_query(received.text):
-            return
-        self.commands += 1
-        told = received.text.split(";")[0].split()[-1]
-        level = {"ON": 1.0, "OFF": 0.0}.get(told.upper())
-        number = float(told) if level is None else level
-        with sqlite3.connect(f"file:{self._record}?mode=ro", uri=True) as db:
-            rows = db.execute(
-                "SELECT i.level FROM intents i LEFT JOIN outcomes o ON o.intent = i.seq "
-                "WHERE o.seq IS NULL AND i.instrument = ?",
-                (received.instrument,),
-            ).fetchall()
-        if not any(abs(row[0] - number) < 1e-6 for row in rows):
-            self.orphans.append(received.text)
 
 
 @pytest.mark.long

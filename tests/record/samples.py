@@ -67,6 +67,42 @@ def note(text: str = "nothing happened", kind: str = "heartbeat") -> Draft:
     return Draft(kind=kind, actor="daemon", data={"note": text})
 
 
+def scan_point(request: int | SameCommit, intent: int | SameCommit | None, **fields: Any) -> Draft:
+    data: dict[str, Any] = {"request": request, "intent": intent, "pass_number": 1, "point": 0, "level_v": 0.0005}
+    data |= {"frequency_hz": None if intent is None else 2_033_000.0, "dwell_s": 0.02, "counts": 412}
+    return Draft(kind="scan_point", actor="scans", data=data | {"at_us": NOON_US + 10_000} | fields)
+
+
+def finding(request: int | SameCommit, state: str = "found", **fields: Any) -> Draft:
+    data: dict[str, Any] = {"request": request, "scan": "y", "mode": "y", "species": "40Ca+", "state": state}
+    data |= {"frequency_hz": 2_033_100.0, "uncertainty_hz": 30.0, "predicted_hz": 2_033_000.0, "min_contrast": 0.05}
+    data |= {"message": "a resonance", "flags": ["wide", "near_edge"], "why": "daily"}
+    return Draft(kind="finding", actor="scans", data=data | fields)
+
+
+def secular_frequency(request: int | SameCommit, finding: int | SameCommit, **fields: Any) -> Draft:
+    data: dict[str, Any] = {"request": request, "finding": finding, "scan": "y", "species": "40Ca+", "mode": "y"}
+    data |= {"frequency_hz": 2_033_100.0, "uncertainty_hz": 30.0, "low_95_hz": 2_033_041.2, "high_95_hz": 2_033_158.8}
+    data |= {"at_us": NOON_US + 20_000, "predicted_hz": 2_033_000.0, "predicted_uncertainty_hz": 40.0}
+    data |= {"width_hz": 1900.0, "contrast": 0.4, "likelihood_ratio": 88.5, "method": "uniform", "fit_version": "1"}
+    data |= {"calibration": None, "flags": "wide near_edge", "points": 24, "who": "ada", "why": "daily"}
+    return Draft(kind="secular_frequency", actor="scans", data=data | fields)
+
+
+def due_run(state: str = "run", due_us: int = NOON_US, **fields: Any) -> Draft:
+    data: dict[str, Any] = {"schedule": "nightly", "scan": "y", "due_us": due_us, "state": state, "late_s": 0.5}
+    return Draft(kind="due_run", actor="schedule", data=data | {"request": None, "reason": ""} | fields)
+
+
+def write_scan(record: Record) -> int:
+    """Seven entries: due, request, intent, a point without and one with the tickle, what was found. The request's seq."""
+    due = due_run(request=None)
+    asked = record.append(due, request(kind="scan"), intent(2_033_000.0, setpoint="tickle.frequency")).result()[1].seq
+    record.append(scan_point(asked, None), scan_point(asked, asked + 1, point=1)).result()
+    record.append(finding(asked), secular_frequency(asked, SameCommit(0))).result()
+    return asked
+
+
 def write_day(record: Record) -> None:
     """Six entries: a request refused, two steps of which the second has no outcome, a heartbeat."""
     record.append(request(), refusal(SameCommit(0))).result()

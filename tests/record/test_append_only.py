@@ -8,18 +8,19 @@ from pathlib import Path
 
 import pytest
 
-from tests.record.samples import StandingClock, intent, note, outcome, plain, write_day
+from tests.record.samples import StandingClock, intent, note, outcome, plain, write_day, write_scan
 from trapd.errors import Bug, RecordDamaged, RecordUnwritable
 from trapd.record import Record, verify
 from trapd.record.connection import migrating_engine, writing_engine
 
-TABLES = ("entries", "intents", "outcomes")
+TABLES = ("entries", "intents", "outcomes", "scan_points", "secular_frequencies", "due_runs")
 
 
 @pytest.fixture
 def other(record: Record, path: Path) -> Iterator[sqlite3.Connection]:
     """A connection of another program, beside the running writer."""
     write_day(record)
+    write_scan(record)
     connection = plain(path)
     before = contents(connection)
     yield connection
@@ -35,11 +36,18 @@ def contents(connection: sqlite3.Connection) -> list[list[tuple[object, ...]]]:
 def attempts(table: str) -> list[str]:
     row = f"SELECT * FROM {table} ORDER BY seq DESC LIMIT 1"
     first = f"SELECT * FROM {table} ORDER BY seq LIMIT 1"
-    column = {"entries": "actor", "intents": "who", "outcomes": "state"}[table]
+    change = {
+        "entries": "actor = 'eve'",
+        "intents": "who = 'eve'",
+        "outcomes": "state = 'eve'",
+        "scan_points": "counts = 0",
+        "secular_frequencies": "who = 'eve'",
+        "due_runs": "scan = 'eve'",
+    }[table]
     return [
-        f"UPDATE {table} SET {column} = 'someone else'",
+        f"UPDATE {table} SET {change}",
         f"UPDATE OR REPLACE {table} SET seq = seq + 1000",
-        f"UPDATE OR IGNORE {table} SET {column} = 'someone else'",
+        f"UPDATE OR IGNORE {table} SET {change}",
         f"DELETE FROM {table}",
         f"DELETE FROM {table} WHERE seq = (SELECT max(seq) FROM {table})",
         f"INSERT INTO {table} {row}",
@@ -47,7 +55,7 @@ def attempts(table: str) -> list[str]:
         f"INSERT OR REPLACE INTO {table} {first}",
         f"INSERT OR IGNORE INTO {table} {row}",
         f"REPLACE INTO {table} {row}",
-        f"INSERT INTO {table} {row} ON CONFLICT (seq) DO UPDATE SET {column} = 'someone else'",
+        f"INSERT INTO {table} {row} ON CONFLICT (seq) DO UPDATE SET {change}",
         f"INSERT INTO {table} {row} ON CONFLICT DO NOTHING",
     ]
 
@@ -60,9 +68,9 @@ def test_any_change_from_any_program_raises(other: sqlite3.Connection, table: st
         other.execute(attempts(table)[number])
 
 
-@pytest.mark.parametrize("seq", [None, 0, -1, 3, 8, 1000])
+@pytest.mark.parametrize("seq", [None, 0, -1, 3, 13, 15, 1000])
 def test_an_entry_takes_no_place_but_the_next(other: sqlite3.Connection, seq: int | None) -> None:
-    assert other.execute("SELECT max(seq) FROM entries").fetchone() == (6,)
+    assert other.execute("SELECT max(seq) FROM entries").fetchone() == (13,)
     with pytest.raises(sqlite3.IntegrityError):
         other.execute("INSERT OR REPLACE INTO entries VALUES (?, 1, 1, 'b', 'note', 'x', '{}', ?)", (seq, "0" * 64))
 
@@ -108,6 +116,8 @@ def test_the_schema_itself_refuses_what_is_no_finite_number(record: Record, path
         "DROP TRIGGER entries_no_delete",
         "DROP TRIGGER entries_in_order",
         "DROP TABLE outcomes",
+        "DROP TABLE secular_frequencies",
+        "DROP TRIGGER due_runs_no_update",
     ],
 )
 def test_our_own_connections_drop_neither_table_nor_trigger(

@@ -73,7 +73,12 @@ def entry(one: Entry) -> dict[str, Any]:
 
 
 def commanded(one: Commanded) -> dict[str, Any]:
-    return {"seq": one.seq, "time": rfc3339(one.time_us), **plain(one)}
+    return timed(one, one.time_us)
+
+
+def timed(row: Any, at_us: int) -> dict[str, Any]:
+    """A row of the record with the time it is about."""
+    return {"seq": row.seq, "time": rfc3339(at_us), **plain(row)}
 
 
 def problem(error: TrapdError, *, status: int | None = None, headers: Mapping[str, str] | None = None) -> Answer:

@@ -10,7 +10,7 @@ from fastapi import FastAPI
 from fastapi.exceptions import RequestValidationError
 from starlette.exceptions import HTTPException
 
-from trapd.api import administering, answers, moves, reading
+from trapd.api import administering, answers, claims, moves, reading, scans
 from trapd.api.access import Tokens
 from trapd.api.door import Door
 from trapd.api.judging import Judging
@@ -57,6 +57,8 @@ def build_app(service: Service) -> FastAPI:
         reading.trap_routes(service, judging),
         judging.router(),
         moves.routes(service.controller),
+        scans.routes(service, reader),
+        claims.routes(service.controller),
         reading.record_routes(service, reader, viewers),
         administering.routes(tokens),
     ):

@@ -42,6 +42,7 @@ def _drivable(values: dict[str, float]) -> dict[str, float]:
 
 Name = Annotated[str, Field(min_length=1, max_length=64, pattern=_TEXT)]
 Why = Annotated[str, Field(max_length=500, pattern=_NOT_BLANK)]
+HastyWhy = Annotated[str, Field(max_length=500, pattern=_TEXT)]
 Number = Annotated[float, Field(ge=-_LARGEST_NUMBER, le=_LARGEST_NUMBER)]
 Setpoints = Annotated[dict[Name, Number], Field(max_length=64), AfterValidator(_drivable)]
 Ions = Annotated[dict[Name, Annotated[int, Field(ge=1, le=1_000_000)]], Field(max_length=64)]
@@ -101,40 +102,38 @@ class WindowBody(Body):
     ions: Ions | None = None
 
 
-class SetBody(Body):
+class MoveBody(Body):
+    """``interrupt``: stop what runs for somebody else, and go over somebody else's claim."""
+
+    why: Why
+    interrupt: bool = False
+
+
+class SetBody(MoveBody):
     values: Annotated[Setpoints, Field(min_length=1)]
-    why: Why
 
 
-class GoBody(Body):
+class GoBody(MoveBody):
     point: Name
-    why: Why
 
 
-class BackBody(Body):
-    why: Why
-
-
-class OnBody(Body):
+class OnBody(MoveBody):
     """``point``: the first of the trap file when left out."""
 
     point: Name | None = None
-    why: Why
 
 
-class EmptyBody(Body):
+class EmptyBody(MoveBody):
     """``point``: where to go afterwards; back to where it was when left out."""
 
     point: Name | None = None
     stay_off: bool = False
-    why: Why
 
 
-class IonsBody(Body):
+class IonsBody(MoveBody):
     presence: Presence
     ions: Ions = Field(default_factory=dict)
     incoming: Annotated[list[Name], Field(max_length=64)] = Field(default_factory=list)
-    why: Why
 
     @property
     def contents(self) -> Contents:
@@ -142,7 +141,38 @@ class IonsBody(Body):
 
 
 class OffBody(Body):
-    why: Annotated[str, Field(max_length=500, pattern=_TEXT)] = ""
+    why: HastyWhy = ""
+
+
+class ScanBody(Body):
+    """``scan``: its name in the trap file. ``interrupt`` as in a move."""
+
+    scan: Name
+    why: HastyWhy = ""
+    interrupt: bool = False
+
+
+class ClaimBody(Body):
+    """``until``: no end when left out."""
+
+    why: Why
+    until: Time | None = None
+
+
+class ReleaseBody(Body):
+    """``interrupt``: also release what somebody else claimed."""
+
+    why: HastyWhy = ""
+    interrupt: bool = False
+
+
+class PauseBody(Body):
+    why: Why
+    until: Time
+
+
+class ResumeBody(Body):
+    why: HastyWhy = ""
 
 
 class TokenBody(Body):
@@ -167,6 +197,25 @@ class AskedSetpoints(Asked):
     setpoint: Name | None = None
     state: Name | None = None
     who: Name | None = None
+    since: Time | None = None
+    until: Time | None = None
+
+
+class AskedFrequencies(Asked):
+    after: Seq | None = None
+    limit: Limit = 100
+    scan: Name | None = None
+    species: Name | None = None
+    mode: Literal["x", "y", "z"] | None = None
+    since: Time | None = None
+    until: Time | None = None
+
+
+class AskedDue(Asked):
+    after: Seq | None = None
+    limit: Limit = 100
+    schedule: Name | None = None
+    state: Literal["run", "late", "skipped", "missed"] | None = None
     since: Time | None = None
     until: Time | None = None
 

@@ -13,8 +13,9 @@ from trapd.api import answers
 from trapd.api.access import Reading
 from trapd.api.answers import Answer
 from trapd.api.bodies import AskedEntries, AskedSetpoints, AskedState, AskedStream, AskedVerify, Seq
+from trapd.api.frequencies import Frequencies
 from trapd.api.judging import Judging
-from trapd.api.service import Service
+from trapd.api.service import Service, upcoming
 from trapd.api.stream import Viewers
 from trapd.errors import Conflict
 from trapd.guard.rules import RULES
@@ -24,6 +25,7 @@ from trapd.setpoint import unit_of
 
 def trap_routes(service: Service, judging: Judging) -> APIRouter:
     router = APIRouter(tags=["trap"])
+    frequencies = Frequencies(service.model, tuple(service.config.scans.values()))
 
     @router.get("/v1/health", summary="Whether the service lives, and is ready to move the trap; no token")
     async def health() -> Answer:
@@ -41,11 +43,14 @@ def trap_routes(service: Service, judging: Judging) -> APIRouter:
         situation = service.controller.situation
         # Not on the pool of those who read the record: a dead disk must not hide the state of the trap.
         verdict = await asyncio.to_thread(judging.present, situation)
+        compared = await asyncio.to_thread(frequencies.compared, situation)
         return Answer(
             {
                 "name": service.config.trap.name,
                 "situation": situation,
                 "verdict": verdict,
+                "frequencies": compared,
+                "upcoming": upcoming(service),
                 "record": {"last_seq": service.record.last_seq, "head": service.record.head},
                 "version": service.version,
                 "simulated": service.simulated,
@@ -73,6 +78,8 @@ def describe(service: Service) -> dict[str, Any]:
         },
         "species": {name: answers.plain(one) for name, one in service.model.catalogue.items()},
         "points": config.points,
+        "scans": config.scans,
+        "schedule": config.schedule,
         "rules": RULES,
         "simulated": service.simulated,
     }

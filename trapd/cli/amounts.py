@@ -28,6 +28,39 @@ def number(value: float, digits: int = 6) -> str:
     return f"{value + 0.0:.{digits}g}"
 
 
+def with_uncertainty(value_hz: float, uncertainty_hz: float) -> str:
+    """``2.155021 MHz ± 48 Hz``: the uncertainty with two digits, the value as far as that says something."""
+    if not uncertainty_hz > 0:
+        return amount(value_hz, "Hz", 9)
+    place = math.floor(math.log10(float(f"{uncertainty_hz:.1e}"))) - 1
+    scale, unit = _scale_of(value_hz)
+    decimals = max(0, round(math.log10(scale)) - place)
+    return f"{value_hz / scale:.{decimals}f} {unit} ± {hertz(uncertainty_hz, 2)}"
+
+
+def hertz(value_hz: float, digits: int = 3, *, signed: bool = False) -> str:
+    """``48 Hz``, ``-1.23 kHz``, signed ``+21 Hz``; never with an exponent."""
+    short = float(f"{value_hz:.{digits}g}")
+    scale, unit = _scale_of(short)
+    decimals = max(0, digits - 1 - math.floor(math.log10(abs(short) / scale))) if short else 0
+    text = f"{short / scale + 0.0:{'+' if signed else ''}.{decimals}f}"
+    return f"{text.rstrip('0').rstrip('.') if '.' in text else text} {unit}"
+
+
+def millivolts(volts: float) -> str:
+    """``0.5 mV``: levels of a tickle."""
+    return amount(volts * 1e3, "mV", 4)
+
+
+def rate(value_per_s: float) -> str:
+    """``12 345 /s``."""
+    return f"{value_per_s:,.0f} /s".replace(",", " ")
+
+
+def _scale_of(value_hz: float) -> tuple[float, str]:
+    return next(((scale, name) for scale, name in _HZ if abs(value_hz) >= scale), (1.0, "Hz"))
+
+
 def value_of(setpoint: str, value: float | None) -> str:
     """A value of a setpoint; the drive frequency shows every Hz."""
     unit = unit_of(setpoint)

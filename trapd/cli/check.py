@@ -8,7 +8,7 @@ from typing import Any
 
 import click
 
-from trapd.cli.amounts import amount, duration, number, value_of
+from trapd.cli.amounts import amount, duration, millivolts, number, rate, value_of
 from trapd.cli.answer import Data, tell
 from trapd.cli.options import command, file_argument
 from trapd.cli.terminal import BAD, GOOD, STRONG, say, table
@@ -48,6 +48,10 @@ def check_command(file: Path, instruments: bool) -> None:
         "species": {one.name: _some(one, _SPECIES) for one in config.species.values()},
         "guard": asdict(config.guard),
         "points": {name: asdict(judge(model, everybody, state)) for name, state in states.items()},
+        "tickle": config.tickle and asdict(config.tickle),
+        "counter": config.counter and asdict(config.counter),
+        "scans": {name: asdict(one) for name, one in config.scans.items()},
+        "schedule": [asdict(one) for one in config.schedule],
         "record": str(config.record_file),
     }
     if instruments:
@@ -77,6 +81,7 @@ def _show(answer: Data) -> None:
     for name, verdict in answer["points"].items():
         say()
         _show_point(name, verdict)
+    _show_scans(answer)
     if "instruments" in answer:
         say()
         rows = [(name, one["resource"], *_answers(one)) for name, one in answer["instruments"].items()]
@@ -125,6 +130,25 @@ def _show_point(name: str, verdict: Data) -> None:
     say((f"point {name}: ", STRONG), word, f"  {values}")
     show_reasons(verdict["reasons"], verdict["values"])
     show_species(verdict["species"])
+
+
+def _show_scans(answer: Data) -> None:
+    if answer["scans"]:
+        say()
+        columns = ("scan", "mode", ">tickle", ">span", ">width", ">dwell", ">target", ">passes", ">contrast from")
+        table(columns, [_scan_row(one) for one in answer["scans"].values()])
+        tickle, counter = answer["tickle"], answer["counter"]
+        say(f"tickle at most {millivolts(tickle['level_max_v'])}, none below {rate(counter['floor_per_s'])} counted")
+    if answer["schedule"]:
+        say()
+        table(("due", "scan", "cron (UTC)"), [(one["name"], one["scan"], one["cron"]) for one in answer["schedule"]])
+
+
+def _scan_row(one: Data) -> tuple[str, ...]:
+    mode = f"{one['mode']} of {one['species'] or 'what is held'}"
+    hertz = (amount(one[key], "Hz") for key in ("span_hz", "width_hz"))
+    ends = amount(one["target_hz"], "Hz"), str(one["passes"]), _percent(one["min_contrast"])
+    return one["name"], mode, millivolts(one["tickle_v"]), *hertz, duration(one["dwell_s"]), *ends
 
 
 def _answers(one: Data) -> tuple[str, str]:

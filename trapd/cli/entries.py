@@ -5,8 +5,10 @@ from __future__ import annotations
 import json
 from collections.abc import Callable, Mapping
 
-from trapd.cli.amounts import amount, duration, in_order, value_of
+from trapd.cli.amounts import amount, duration, in_order, millivolts, value_of, with_uncertainty
 from trapd.cli.answer import Data
+from trapd.cli.finding import finding_words
+from trapd.cli.words import utc
 from trapd.setpoint import FREQUENCY
 
 _LONGEST = 160
@@ -50,8 +52,18 @@ def _why(data: Data) -> str:
 
 def _request(data: Data) -> str:
     contents = data.get("contents")
-    what = _values(data["values"]) or data.get("point") or (contents and contents_words(contents)) or ""
+    what = (
+        _values(data["values"])
+        or data.get("point")
+        or data.get("scan")
+        or (contents and contents_words(contents))
+        or ""
+    )
     return f"{data['kind']} {what}".strip() + _why(data)
+
+
+def _halt(data: Data) -> str:
+    return ("nothing moved" if data["request"] is None else f"stopped {data['request']}") + _why(data)
 
 
 def _verdict(data: Data) -> str:
@@ -71,6 +83,9 @@ def _ramp(data: Data) -> str:
 def _intent(data: Data) -> str:
     if data["quantity"] == "output":
         return f"{data['setpoint']} {'on' if data['level'] else 'off'} ({data['instrument']})"
+    if data["quantity"] == "burst":
+        level = millivolts(data["level"])
+        return f"{data['setpoint']} {amount(data['value'], 'Hz', 9)}, {level} ({data['instrument']})"
     level = amount(data["level"], "Hz" if data["setpoint"] == FREQUENCY else "V", 9)
     return f"{data['setpoint']} = {value_of(data['setpoint'], data['value'])} ({data['instrument']} told {level})"
 
@@ -92,6 +107,43 @@ def _off(data: Data) -> str:
     return ", ".join(said) + _why(data)
 
 
+def _plan(data: Data) -> str:
+    window = f"{amount(data['low_hz'], 'Hz', 7)} to {amount(data['high_hz'], 'Hz', 7)}"
+    level = millivolts(data["level_v"])
+    how = f"{data['points']} points of {duration(data['dwell_s'])} a pass, {data['passes']} passes at most"
+    return f"{data['scan']}: {data['mode']} of {data['species']}, {window}, {level}, {how}"
+
+
+def _scan_point(data: Data) -> str:
+    where = "tickle off" if data["frequency_hz"] is None else amount(data["frequency_hz"], "Hz", 9)
+    return f"pass {data['pass_number']}: {data['counts']} counts in {duration(data['dwell_s'])}, {where}"
+
+
+def _finding(data: Data) -> str:
+    flags = f" ({', '.join(data['flags'])})" if data["flags"] else ""
+    return f"{data['scan']}: {data['state']}: {finding_words(data)}{flags}"
+
+
+def _estimate(data: Data) -> str:
+    if data["frequency_hz"] is None:
+        return f"pass {data['pass_number']}: {data['message']}"
+    return f"pass {data['pass_number']}: {with_uncertainty(data['frequency_hz'], data['uncertainty_hz'])}"
+
+
+def _secular_frequency(data: Data) -> str:
+    return f"{data['mode']} of {data['species']}: {with_uncertainty(data['frequency_hz'], data['uncertainty_hz'])}"
+
+
+def _due_run(data: Data) -> str:
+    reason = f": {data['reason']}" if data["reason"] else ""
+    return f"{data['schedule']}, due {utc(data['due_us'])}: {data['state']}{reason}"
+
+
+def _claim(data: Data) -> str:
+    until = f" until {utc(data['until_us'])}" if data.get("until_us") else ""
+    return f"{data['state']}{until}" + _why(data)
+
+
 def _token(data: Data) -> str:
     return f"{data['action']} {data['name']}" + (f" ({data['role']})" if data.get("role") else "")
 
@@ -105,6 +157,15 @@ _SENTENCES: Mapping[str, Callable[[Data], str]] = {
     "result": _result,
     "contents": lambda data: contents_words(data) + _why(data),
     "off": _off,
+    "halt": _halt,
+    "plan": _plan,
+    "scan_point": _scan_point,
+    "estimate": _estimate,
+    "finding": _finding,
+    "secular_frequency": _secular_frequency,
+    "due_run": _due_run,
+    "claim": _claim,
+    "pause": _claim,
     "token": _token,
     "start": lambda data: ", ".join(f"{name} {version}" for name, version in data["software"].items()),
     "configuration": lambda data: str(data["source"]),

@@ -6,7 +6,7 @@ import click
 
 from trapd.cli.answer import Data, tell
 from trapd.cli.entries import contents_words
-from trapd.cli.options import at_option, command, why_option
+from trapd.cli.options import at_option, command, interrupt_option, why_option
 from trapd.cli.terminal import GOOD, say
 from trapd.cli.verdicts import show_warnings, tell_refusal
 from trapd.cli.words import read_contents
@@ -22,8 +22,9 @@ from trapd.errors import GuardRefused
 )
 @click.argument("contents", nargs=-1, required=True, metavar="SPECIES=N... | none | unknown | loading SPECIES...")
 @why_option
+@interrupt_option
 @at_option
-def ions_command(contents: tuple[str, ...], why: str, at: str | None) -> None:
+def ions_command(contents: tuple[str, ...], why: str, interrupt: bool, at: str | None) -> None:
     """Say what is in the trap. Species and how many, none, unknown, or loading and what comes in.
 
     What is held is guarded in every move. Declaring it is refused unless the present state is safe for it.
@@ -31,7 +32,7 @@ def ions_command(contents: tuple[str, ...], why: str, at: str | None) -> None:
     said = read_contents(contents)
     with Client(at) as client:
         try:
-            tell(client.ions(said.presence, said.ions, said.incoming, why=why), _show)
+            tell(client.ions(said.presence, said.ions, said.incoming, why=why, interrupt=interrupt), _show)
         except GuardRefused as error:
             tell_refusal(error, why)
 

@@ -10,7 +10,7 @@ import click
 
 from trapd.cli.amounts import duration, in_order, value_of
 from trapd.cli.answer import INTERRUPTED, Data, tell, wants_json
-from trapd.cli.options import at_option, command, wait_option, why_option
+from trapd.cli.options import at_option, command, interrupt_option, wait_option, why_option
 from trapd.cli.terminal import BAD, GOOD, console, is_terminal, say
 from trapd.cli.verdicts import NO_VALUES, tell_refusal
 from trapd.cli.words import split_list
@@ -20,7 +20,7 @@ from trapd.errors import BadRequest, GuardRefused, TrapdError
 
 LEFT = "no longer followed; the ramp continues in the daemon: `trapd stop` holds it where it is, `trapd off` ends it"
 
-_OPTIONS = (why_option, wait_option, at_option)
+_OPTIONS = (why_option, interrupt_option, wait_option, at_option)
 
 Ask = Callable[[Client], dict[str, Any]]
 
@@ -31,7 +31,7 @@ Ask = Callable[[Client], dict[str, Any]]
     options=_OPTIONS,
 )
 @click.argument("values", nargs=-1, required=True, metavar="NAME=VALUE...")
-def set_command(values: tuple[str, ...], why: str, wait: bool, at: str | None) -> None:
+def set_command(values: tuple[str, ...], why: str, interrupt: bool, wait: bool, at: str | None) -> None:
     """Move setpoints to values. Judged first, then ramped one at a time, each step recorded, read back and compared."""
     wanted = parse_assignments(split_list(values))
 
@@ -40,29 +40,29 @@ def set_command(values: tuple[str, ...], why: str, wait: bool, at: str | None) -
         for name in wanted:  # the daemon refuses a wrong name too; here it costs no entry, and may be near a right one
             if name not in known:
                 raise BadRequest(f'"{name}" is no setpoint of this trap{closest(name, known)}; nothing was sent')
-        return client.set(wanted, why=why, wait=False)
+        return client.set(wanted, why=why, interrupt=interrupt, wait=False)
 
     _move(at, wait, why, ask, wanted)
 
 
 @command('trapd go work --why "back to the day\'s setting"', options=_OPTIONS)
 @click.argument("point")
-def go_command(point: str, why: str, wait: bool, at: str | None) -> None:
+def go_command(point: str, why: str, interrupt: bool, wait: bool, at: str | None) -> None:
     """Move to a named point of the trap file."""
-    _move(at, wait, why, lambda client: client.go(point, why=why, wait=False))
+    _move(at, wait, why, lambda client: client.go(point, why=why, interrupt=interrupt, wait=False))
 
 
 @command('trapd back --why "that was worse"', options=_OPTIONS)
-def back_command(why: str, wait: bool, at: str | None) -> None:
+def back_command(why: str, interrupt: bool, wait: bool, at: str | None) -> None:
     """Move to the state before the last completed move."""
-    _move(at, wait, why, lambda client: client.back(why=why, wait=False))
+    _move(at, wait, why, lambda client: client.back(why=why, interrupt=interrupt, wait=False))
 
 
 @command('trapd on --why "start of the day"', 'trapd on work --why "after the bake"', options=_OPTIONS)
 @click.argument("point", required=False)
-def on_command(point: str | None, why: str, wait: bool, at: str | None) -> None:
+def on_command(point: str | None, why: str, interrupt: bool, wait: bool, at: str | None) -> None:
     """Switch an empty trap on and ramp it to POINT (default: the first). Supplies begin at 0 V, RF at its least level."""
-    _move(at, wait, why, lambda client: client.on(point, why=why, wait=False))
+    _move(at, wait, why, lambda client: client.on(point, why=why, interrupt=interrupt, wait=False))
 
 
 @command(
@@ -72,12 +72,14 @@ def on_command(point: str | None, why: str, wait: bool, at: str | None) -> None:
 )
 @click.argument("point", required=False)
 @click.option("--stay-off", is_flag=True, help="RF stays off afterwards.")
-def empty_command(point: str | None, stay_off: bool, why: str, wait: bool, at: str | None) -> None:
+def empty_command(point: str | None, stay_off: bool, why: str, interrupt: bool, wait: bool, at: str | None) -> None:
     """Let every ion go, then back to a point or off. RF is off until nothing can be left, then ramped to POINT (default: the
     first), or --stay-off."""
     if stay_off and point is not None:
         raise BadRequest(f'--stay-off goes nowhere; leave out "{point}"')
-    _move(at, wait, why, lambda client: client.empty(point, stay_off=stay_off, why=why, wait=False))
+    _move(
+        at, wait, why, lambda client: client.empty(point, stay_off=stay_off, why=why, interrupt=interrupt, wait=False)
+    )
 
 
 def _move(at: str | None, wait: bool, why: str, ask: Ask, asked: Mapping[str, float] = NO_VALUES) -> None:
@@ -94,21 +96,25 @@ def _move(at: str | None, wait: bool, why: str, ask: Ask, asked: Mapping[str, fl
         except GuardRefused as error:
             tell_refusal(error, why, asked)
         except KeyboardInterrupt:
-            click.echo(f"\n{LEFT if answer else _fate(client, newest, why)}", err=True)
+            _, words = (0, LEFT) if answer else fate(client, newest, {"why": why})
+            click.echo(f"\n{words or LEFT}", err=True)
             click.get_current_context().exit(INTERRUPTED)
 
 
-def _fate(client: Client, after: int, why: str) -> str:
-    """What became of a request that nobody waits for any more: the daemon drops it if its turn had not come."""
+def fate(client: Client, after: int, asked: Data) -> tuple[int | None, str]:
+    """What became of a request that nobody waits for any more: the daemon drops it if its turn had not come.
+
+    Its entry when it goes on, else None and how it ended. ``asked``: what its entry, beyond ``after``, is known by.
+    """
     request = None
     for entry in client.follow(after):
         data = entry["data"]
-        if entry["kind"] == "request" and data["why"] == why:
+        if entry["kind"] == "request" and all(data[key] == value for key, value in asked.items()):
             request = entry["seq"]
         elif entry["kind"] == "verdict" and data["request"] == request:
-            return LEFT if data["accepted"] else "refused; nothing was sent"
+            return (request, "") if data["accepted"] else (None, "refused; nothing was sent")
         elif entry["kind"] == "result" and data["request"] == request:
-            return f"withdrawn: {data['error']}"
+            return None, f"withdrawn: {data['error']}"
     raise AssertionError("a stream ends only with an error")
 
 

@@ -37,7 +37,7 @@ def _show_off(answer: Data) -> None:
 @hasty_why_option
 @at_option
 def stop_command(why: str, at: str | None) -> None:
-    """Stop the move in progress where it is. Every output holds."""
+    """Stop the move or the scan in progress where it is. Every output holds; the tickle goes off."""
     with Client(at) as client:
         tell(client.stop(why=why), _show_stop)
 

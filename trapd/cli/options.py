@@ -24,6 +24,9 @@ at_option = click.option(
 )
 why_option = click.option("--why", required=True, metavar="TEXT", help="The reason; it stands in the record.")
 hasty_why_option = click.option("--why", default="", metavar="TEXT", help="A reason, if there is time for one.")
+interrupt_option = click.option(
+    "--interrupt", is_flag=True, help="Stop what runs for somebody else, and go over somebody else's claim."
+)
 wait_option = click.option(
     "--wait/--no-wait", default=True, show_default=True, help="See the move to its end, or return when it is accepted."
 )

@@ -31,9 +31,11 @@ COMMANDS: Mapping[str, Mapping[str, str]] = {
         "back": "moves",
         "ions": "ions",
         "empty": "moves",
+        "scan": "scan",
         "stop": "off",
         "off": "off",
     },
+    "Who comes first": {"claim": "claims", "release": "claims", "pause": "claims", "resume": "claims"},
     "What was done": {"record": "record", "verify": "verify"},
     "People": {"token": "token"},
 }

@@ -3,33 +3,38 @@
 from __future__ import annotations
 
 import sys
-from collections.abc import Callable, Mapping, Sequence
-from dataclasses import asdict
+from collections.abc import Callable, Mapping
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
 import click
 
-from trapd.cli.amounts import value_of
+from trapd.cli.amounts import duration, hertz, value_of, with_uncertainty
 from trapd.cli.answer import Data, tell, wants_json
 from trapd.cli.entries import sentence
-from trapd.cli.options import at_option, command
+from trapd.cli.options import Command, at_option, command
+from trapd.cli.rows import MOMENTS, from_daemon, from_file
 from trapd.cli.terminal import FAINT, say, table
 from trapd.cli.words import read_moment
-from trapd.client import Client
 from trapd.errors import BadRequest
 
-Rows = list[dict[str, Any]]
+_NAMES = {"refused": "refusals"}
+"""What the rows of a view are called, where that is not how it is asked for."""
 
-_MOST = 1000
-"""Verdicts looked through for refusals."""
+_EXPORTS = {"due": "due_times"}
+"""The same for the record's own views."""
+
+
+def _view(name: str, help: str) -> Callable[[Command], Command]:
+    return click.option(f"--{name}", "views", flag_value=_NAMES.get(name, name), multiple=True, help=help)
 
 
 @command(
     "trapd record --since 1h",
     "trapd record --kind request --who ada --limit 5",
     "trapd record --setpoints --since 10min --json",
+    "trapd record --frequencies --since 30d",
     "trapd record --file trapd.sqlite --refused",
     "trapd record --file trapd.sqlite --export csv setpoints.csv",
 )
@@ -40,13 +45,17 @@ _MOST = 1000
 @click.option(
     "--limit", type=click.IntRange(1, 1000), default=40, show_default=True, help="At most so many, the newest."
 )
-@click.option("--setpoints", is_flag=True, help="What was sent and what was read back.")
-@click.option("--refused", is_flag=True, help="What was refused, and why.")
+@_view("setpoints", "What was sent and what was read back.")
+@_view("refused", "What was refused, and why.")
+@_view("scans", "What scans found, or that they found nothing.")
+@_view("frequencies", "The secular frequencies that were measured.")
+@_view("due", "What became of what was due.")
 @click.option(
     "--export",
     type=(click.Choice(["csv", "jsonl"]), click.Path(path_type=Path)),
     metavar="FORMAT PATH",
-    help="Copy all of it out: csv (what was sent and read back) or jsonl (every entry); - for standard output.",
+    help="Copy all of it out, or the table named beside it: csv (alone: what was sent and read back) or jsonl (alone: "
+    "every entry); - for standard output.",
 )
 @at_option
 def record_command(
@@ -55,71 +64,42 @@ def record_command(
     kind: str | None,
     who: str | None,
     limit: int,
-    setpoints: bool,
-    refused: bool,
+    views: tuple[str, ...],
     export: tuple[str, Path] | None,
     at: str | None,
 ) -> None:
-    """What was asked, judged, sent and read back. The newest last: every entry, or with --setpoints what was sent, with
-    --refused what was not.
+    """What was asked, judged, sent and read back. The newest last: every entry, or one of the tables --setpoints (what was
+    sent), --refused (what was not), --scans, --frequencies and --due.
 
     Asks the running daemon, or a file with --file, also while a daemon writes it. Times are UTC.
     """
     one_source(file, at)
-    if setpoints and refused:
-        raise BadRequest("--setpoints and --refused are two different tables; choose one")
-    if kind and (setpoints or refused):
-        raise BadRequest("--kind narrows entries; leave out --setpoints and --refused")
+    view = _one_of(views, kind, who)
     if export is not None:
-        _export(file, *export)
+        _export(file, *export, view)
         return
-    name = "setpoints" if setpoints else "refusals" if refused else "entries"
     moment = None if since is None else read_moment(since, datetime.now(UTC))
     asked: dict[str, Any] = {"kind": kind, "who": who, "limit": limit, "since": moment}
-    rows = _from_daemon(at, name, **asked) if file is None else _from_file(file, name, **asked)
-    tell({name: rows}, lambda _: _show(name, rows))
+    rows = from_daemon(at, view, **asked) if file is None else from_file(file, view, **asked)
+    tell({view: rows}, lambda _: _show(view, rows))
     if len(rows) == limit and not wants_json():
         say((f"the newest {limit}; --limit shows more", FAINT))
+
+
+def _one_of(views: tuple[str, ...], kind: str | None, who: str | None) -> str:
+    if len(views) > 1:
+        raise BadRequest("--setpoints, --refused, --scans, --frequencies and --due are different tables; choose one")
+    if kind and views:
+        raise BadRequest("--kind narrows entries; leave it out, or leave out the table")
+    if who and views and views[0] in MOMENTS:
+        raise BadRequest(f"--who narrows other tables; leave it out, or leave out --{views[0]}")
+    return views[0] if views else "entries"
 
 
 def one_source(file: Path | None, at: str | None) -> None:
     """A file is asked instead of a daemon."""
     if file is not None and at is not None:
         raise BadRequest("--file asks a file and --at a daemon; leave out --at, or leave out --file")
-
-
-def _from_file(file: Path, name: str, *, kind: str | None, who: str | None, since: datetime | None, limit: int) -> Rows:
-    """Rows in order, the newest last, every one with its ``seq`` and ``time`` (RFC 3339, UTC)."""
-    from trapd.record import Reader, rfc3339
-
-    asked: dict[str, Any] = {"limit": limit, "newest": True, "since_us": since and round(since.timestamp() * 1e6)}
-    found: Sequence[Any]
-    with Reader.open(file) as reader:
-        if name == "entries":
-            found = reader.entries(actor=who, kind=kind, **asked)
-        else:
-            found = (reader.setpoints if name == "setpoints" else reader.refusals)(who=who, **asked)
-    return [{"seq": one.seq, "time": rfc3339(one.time_us), **asdict(one)} for one in found]
-
-
-def _from_daemon(at: str | None, name: str, *, kind: str | None, who: str | None, limit: int, since: Any) -> Rows:
-    """The same rows."""
-    with Client(at) as client:
-        if name == "entries":
-            return client.entries(kind=kind, actor=who, limit=limit, since=since)
-        if name == "setpoints":
-            return client.setpoints(who=who, limit=limit, since=since)
-        verdicts = client.entries(kind="verdict", actor=who, limit=_MOST, since=since)
-        refused = [one for one in verdicts if not one["data"]["accepted"]][-limit:]
-        rows = [row for one in refused for row in _refusals(one, client.entry(one["data"]["request"]))]
-    return rows[-limit:]
-
-
-def _refusals(verdict: Data, request: Data) -> Rows:
-    """The rows that the record's own view `refusals` gives."""
-    head = {key: verdict[key] for key in ("seq", "time", "time_us")}
-    head |= {"request": request["seq"], "who": verdict["actor"], "why": request["data"]["why"]}
-    return [{**head, **reason} for reason in verdict["data"]["reasons"]]
 
 
 def _sent(one: Data) -> tuple[str, ...]:
@@ -139,15 +119,44 @@ def _refused(one: Data) -> tuple[str, ...]:
     return one["who"], one["rule"], f"{one['message']}{why}"
 
 
+def _found(one: Data) -> tuple[str, ...]:
+    number = one["message"]
+    if one["state"] == "found":
+        number = with_uncertainty(one["frequency_hz"], one["uncertainty_hz"])
+    return one["scan"], f"{one['mode']} of {one['species']}", one["state"], _flagged(number, one), _author(one)
+
+
+def _measured(one: Data) -> tuple[str, ...]:
+    off = hertz(one["frequency_hz"] - one["predicted_hz"], signed=True)
+    number = with_uncertainty(one["frequency_hz"], one["uncertainty_hz"])
+    return one["scan"], f"{one['mode']} of {one['species']}", number, _flagged(off, one), _author(one)
+
+
+def _due(one: Data) -> tuple[str, ...]:
+    late = duration(one["late_s"]) if one["state"] in ("run", "late") else "-"
+    return one["schedule"], one["scan"], one["state"], late, str(one["request"] or "-"), one["reason"]
+
+
+def _flagged(text: str, one: Data) -> str:
+    return f"{text} ({one['flags'].replace(' ', ', ')})" if one["flags"] else text
+
+
+def _author(one: Data) -> str:
+    return f"{one['who']}: {one['why']}" if one["why"] else str(one["who"])
+
+
 _TABLES: Mapping[str, tuple[tuple[str, ...], Callable[[Data], tuple[str, ...]]]] = {
     "entries": (("who", "kind", "what"), lambda one: (one["actor"], one["kind"], sentence(one))),
     "setpoints": (("setpoint", ">value", ">read back", "state", "who: why"), _sent),
     "refusals": (("who", "rule", "what was refused"), _refused),
+    "scans": (("scan", "mode", "state", "what was found", "who: why"), _found),
+    "frequencies": (("scan", "mode", "measured", "from the prediction", "who: why"), _measured),
+    "due": (("schedule", "scan", "state", ">late", ">request", "reason"), _due),
 }
 """By name: the columns beside entry and time, and a row's cells in them."""
 
 
-def _show(name: str, rows: Rows) -> None:
+def _show(name: str, rows: list[dict[str, Any]]) -> None:
     """Times to the millisecond, and the day only once when it is all one day."""
     if not rows:
         click.echo("nothing in the record matches")
@@ -164,20 +173,23 @@ def _show(name: str, rows: Rows) -> None:
     table((">entry", heading, *columns), [(str(one["seq"]), time(one), *cells(one)) for one in rows])
 
 
-def _export(file: Path | None, form: str, path: Path) -> None:
+def _export(file: Path | None, form: str, path: Path, view: str) -> None:
     """Never over an existing file: what was exported before is somebody's evidence."""
     if file is None:
         raise BadRequest("--export copies out a record file; name it with --file (`trapd check` prints where it is)")
-    from trapd.record import Reader, export
+    from trapd.record import EXPORTED, Reader, export
 
+    table = None if view == "entries" else _EXPORTS.get(view, view)
+    if table is not None and table not in EXPORTED:
+        raise BadRequest(f"--{view} has no export; use its --json; nothing was exported")
     Reader.open(file).close()
     if str(path) == "-":
-        rows = export(file, sys.stdout, form)
+        rows = export(file, sys.stdout, form, table)
         click.echo(f"{rows} rows", err=True)
         return
     try:
         with path.open("x", encoding="utf-8", newline="" if form == "csv" else None) as out:
-            rows = export(file, out, form)
+            rows = export(file, out, form, table)
     except FileExistsError:
         raise BadRequest(f"{path} exists already; nothing was exported") from None
     except OSError as error:

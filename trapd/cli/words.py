@@ -1,15 +1,17 @@
-"""What people type, as values: ``endcaps=120V,rods=1V``, ``40Ca+=2``, ``30min``."""
+"""What people type, as values: ``endcaps=120V,rods=1V``, ``40Ca+=2``, ``30min``, ``18:00``."""
 
 from __future__ import annotations
 
 import re
 from collections.abc import Iterable, Sequence
-from datetime import UTC, datetime, timedelta
+from datetime import UTC, datetime, time, timedelta
 
 from trapd.errors import BadRequest
 from trapd.setpoint import Contents
 
-_AGO = re.compile(r"(?P<number>[0-9]+(\.[0-9]+)?) ?(?P<unit>s|min|h|d)")
+_WHILE = re.compile(r"(?P<number>[0-9]+(\.[0-9]+)?) ?(?P<unit>s|min|h|d)")
+_CLOCK = re.compile(r"[0-9]{1,2}:[0-9]{2}")
+_EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
 _SECONDS = {"s": 1, "min": 60, "h": 3600, "d": 86400}
 
 
@@ -49,12 +51,47 @@ def read_contents(words: Sequence[str]) -> Contents:
 
 def read_moment(text: str, now: datetime) -> datetime:
     """``90 s``, ``30min``, ``1h``, ``2d`` before ``now``, or a time such as 2026-03-01T12:00:00Z (without offset: local)."""
-    ago = _AGO.fullmatch(text)
     try:
-        if ago is not None:
-            return now - timedelta(seconds=float(ago["number"]) * _SECONDS[ago["unit"]])
-        return datetime.fromisoformat(text).astimezone(UTC)
+        while_ago = _while(text)
+        return _time(text) if while_ago is None else now - while_ago
     except (ValueError, OverflowError):
         raise BadRequest(
             f'--since "{text}": expected a while such as 1h, or a time such as 2026-03-01T12:00:00Z'
         ) from None
+
+
+def read_until(text: str, now: datetime) -> datetime:
+    """``30min``, ``2h`` from ``now``; ``18:00``, the next one here; or a time as in `read_moment`. Raises `BadRequest`,
+    also for what has passed."""
+    try:
+        ahead = _while(text)
+        found = now + ahead if ahead is not None else _next(text, now) if _CLOCK.fullmatch(text) else _time(text)
+    except (ValueError, OverflowError):
+        raise BadRequest(
+            f'--until "{text}": expected a while such as 30min, 18:00, or a time such as 2026-03-01T18:00:00Z'
+        ) from None
+    if found <= now:
+        raise BadRequest(f'--until "{text}" has passed; nothing was sent')
+    return found
+
+
+def utc(time_us: int) -> str:
+    """``2026-03-01 12:00:00 UTC``."""
+    moment = _EPOCH + timedelta(microseconds=time_us)
+    return f"{moment:%Y-%m-%d %H:%M:%S} UTC"
+
+
+def _while(text: str) -> timedelta | None:
+    found = _WHILE.fullmatch(text)
+    return found and timedelta(seconds=float(found["number"]) * _SECONDS[found["unit"]])
+
+
+def _time(text: str) -> datetime:
+    return datetime.fromisoformat(text).astimezone(UTC)
+
+
+def _next(text: str, now: datetime) -> datetime:
+    here = now.astimezone()
+    today = datetime.combine(here.date(), time.fromisoformat(text.zfill(5)))
+    found = today.astimezone(UTC)
+    return found if found > now else (today + timedelta(days=1)).astimezone(UTC)

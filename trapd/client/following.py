@@ -92,10 +92,11 @@ def _or_lost(entries: Iterator[JsonEntry | None], request: int) -> Iterator[Json
 
 
 def _check_that_its_end_may_come(situation: Json, request: int) -> None:
-    moving, unwritten = situation["moving"], situation["unwritten"]
-    if unwritten and (moving is None or moving["request"] != request):
+    under_way = [one["request"] for one in (situation["moving"], situation["scanning"]) if one is not None]
+    unwritten = situation["unwritten"]
+    if unwritten and request not in under_way:
         raise RecordUnwritable(
-            "the move has ended and its end cannot be written; see `trapd status`",
+            "it has ended and its end cannot be written; see `trapd status`",
             {"request": request, "unwritten": unwritten},
         )
 

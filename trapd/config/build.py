@@ -11,11 +11,11 @@ from typing import TYPE_CHECKING, Literal, cast
 from trapd.config.points import sweeps_of
 from trapd.config.records import Config, ElectrodeSection, ResonatorSection, Sweep
 from trapd.errors import ConfigError
-from trapd.guard.model import GuardModel, Limit
+from trapd.guard.model import GuardModel, Limit, TickleLimits
 from trapd.physics import trap as traps
 from trapd.physics.resonator import Resonator
 from trapd.physics.trap import Electrode, Escape, Trap
-from trapd.setpoint import AMPLITUDE, unit_of
+from trapd.setpoint import AMPLITUDE, TICKLE_BURST, TICKLE_FREQUENCY, TICKLE_LEVEL, unit_of
 
 if TYPE_CHECKING:
     from trapd_drivers.interfaces import Scale
@@ -58,7 +58,8 @@ def resonator_of(section: ResonatorSection) -> Resonator:
 
 
 def guard_of(config: Config, scales: Mapping[str, Scale] = _NO_SCALES) -> GuardModel:
-    """``scales`` by setpoint, in its unit, but ``drive.amplitude`` has that of the synthesizer's level (V peak).
+    """``scales`` by setpoint, in its unit, but ``drive.amplitude`` has that of the synthesizer's level (V peak); and those
+    of the tickle.
 
     The limits are those of the file, tightened to what the instruments can do. Without scales (offline) nothing is
     quantised. Raises `ConfigError` where file and instrument have no value in common, or a step is too fine.
@@ -78,6 +79,7 @@ def guard_of(config: Config, scales: Mapping[str, Scale] = _NO_SCALES) -> GuardM
         margin=config.guard.margin,
         min_secular_frequency_hz=config.guard.min_secular_frequency_hz,
         min_depth_ev=config.guard.min_depth_ev,
+        tickle=_tickle(config, scales),
     )
 
 
@@ -88,6 +90,20 @@ def setpoints_of(config: Config) -> dict[str, Sweep]:
 
 def _electrode(section: ElectrodeSection) -> Electrode:
     return Electrode(kind=section.kind, weight=section.weight, curvature=section.curvature, field=section.field)
+
+
+def _tickle(config: Config, scales: Mapping[str, Scale]) -> TickleLimits | None:
+    if config.tickle is None:
+        return None
+    level, frequency, burst = (scales.get(name) for name in (TICKLE_LEVEL, TICKLE_FREQUENCY, TICKLE_BURST))
+    if level is None or frequency is None:
+        return TickleLimits(level_max_v=config.tickle.level_max_v)
+    return TickleLimits(
+        level_max_v=min(config.tickle.level_max_v, level.high),
+        level_resolution_v=level.resolution,
+        frequency_hz=(frequency.low, frequency.high),
+        burst_s=None if burst is None else (burst.low, burst.high),
+    )
 
 
 def _limit(config: Config, setpoint: str, sweep: Sweep, scales: Mapping[str, Scale]) -> Limit:

@@ -29,6 +29,22 @@ SECTIONS: Mapping[str, tuple[str, ...]] = {
     "instruments.NAME": ("driver", "resource", "profile", "timeout"),
     "guard": ("margin", "min_secular_frequency", "min_depth"),
     "loading": ("expires",),
+    "tickle": ("instrument", "level_max"),
+    "counter": ("instrument", "floor"),
+    "scans": ("NAME",),
+    "scans.NAME": (
+        "mode",
+        "species",
+        "tickle",
+        "span",
+        "dwell",
+        "target",
+        "width",
+        "passes",
+        "min_contrast",
+        "model_uncertainty",
+    ),
+    "schedule": ("scan", "cron", "name"),
     "points": ("NAME",),
     "points.NAME": ("SETPOINT",),
     "record": ("file",),
@@ -39,7 +55,7 @@ TOP: tuple[str, ...] = tuple(dict.fromkeys(section.split(".")[0] for section in 
 """The keys of the file itself, whose section is ""."""
 
 LATER: Mapping[str, tuple[str, ...]] = {
-    "": ("tickle", "counter", "interlocks", "scans", "schedule", "purge", "crystal", "calibrations"),
+    "": ("interlocks", "purge", "crystal", "calibrations"),
     "drive": ("duty", "coupling", "harmonics"),
 }
 """Keys by section (top level: "") that are decided and not built yet in this version."""

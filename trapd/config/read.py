@@ -11,6 +11,7 @@ from trapd.config.electrodes import read_electrodes
 from trapd.config.geometry import read_trap
 from trapd.config.points import read_points, sweeps_of
 from trapd.config.records import Config, TrapSection
+from trapd.config.scans import read_counter, read_scans, read_schedule, read_tickle
 from trapd.config.service import (
     check_wiring,
     read_guard,
@@ -44,8 +45,12 @@ def parse(text: str, file: Path) -> Config:
     drive = read_drive(root.table("drive", "drive", "a table [drive]"), geometry)
     electrodes = read_electrodes(root.optional_table("electrodes"), geometry, mistakes)
     instruments = read_instruments(root.optional_table("instruments"), source, mistakes)
+    tickle, counter = read_tickle(root), read_counter(root)
     if "instruments" in root and "drive" in root:
-        check_wiring(drive, electrodes.values(), instruments, mistakes)
+        alone = {"drive": drive, "tickle": tickle, "counter": counter}
+        owners = {section: owner.instrument for section, owner in alone.items() if owner}
+        check_wiring(owners, electrodes.values(), instruments, mistakes)
+    scans = read_scans(root, species, tickle)
     config = Config(
         source=source,
         text=text,
@@ -59,6 +64,10 @@ def parse(text: str, file: Path) -> Config:
         record_file=read_record_file(root.optional_table("record"), source),
         server=read_server(root.optional_table("server"), source),
         loading=read_loading(root.optional_table("loading")),
+        tickle=tickle,
+        counter=counter,
+        scans=scans,
+        schedule=read_schedule(root, scans),
     )
     mistakes.raise_if_any()
     return config

@@ -11,6 +11,7 @@ from trapd.physics.species import Species
 
 Geometry = Literal["linear", "ring", "tensor"]
 ElectrodeKind = Literal["endcap", "rods", "ring", "other"]
+ScanMode = Literal["x", "y", "z"]
 Matrix = tuple[tuple[float, float, float], tuple[float, float, float], tuple[float, float, float]]
 
 
@@ -107,6 +108,54 @@ class LoadingSection:
 
 
 @dataclass(frozen=True, kw_only=True)
+class TickleSection:
+    """``[tickle]``. ``level_max_v`` (zero to peak) at the generator: never more, whatever a scan asks."""
+
+    instrument: str | None
+    level_max_v: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class CounterSection:
+    """``[counter]``. Below ``floor_per_s`` counts a second nobody is home, and nothing is tickled."""
+
+    instrument: str | None
+    floor_per_s: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class ScanSection:
+    """``[scans.NAME]``. ``species`` None: whatever single species is in the trap. ``tickle_v`` zero to peak at the
+    generator. ``span_hz``: the full width of the search, a cap. ``target_hz``: stop at this standard uncertainty.
+    ``width_hz``: about how wide the line is, full width at half maximum. ``passes``: the most there will be.
+    ``min_contrast``: the least that counts as a line, of 1. ``model_uncertainty``: relative standard uncertainty of what
+    this file predicts, beside that of the drive's gain: geometry, supplies, stray fields."""
+
+    name: str
+    mode: ScanMode
+    species: str | None = None
+    tickle_v: float
+    span_hz: float
+    dwell_s: float
+    target_hz: float
+    width_hz: float = 2000.0
+    passes: int = 12
+    min_contrast: float = 0.05
+    model_uncertainty: float = 0.005
+    method: str = "uniform"
+
+
+@dataclass(frozen=True, kw_only=True)
+class DueSection:
+    """``[[schedule]]``: ``scan`` is due when ``cron``, five fields in UTC, says so. ``name``: that of the scan unless
+    given."""
+
+    name: str
+    scan: str
+    cron: str
+
+
+@dataclass(frozen=True, kw_only=True)
 class ServerSection:
     """``[server]``. ``host``/``port`` of the TCP listener (port 0: any free one). ``socket``: path of the Unix socket, None
     for the usual one in the runtime directory."""
@@ -132,3 +181,7 @@ class Config:
     record_file: Path
     server: ServerSection = field(default_factory=ServerSection)
     loading: LoadingSection = field(default_factory=LoadingSection)
+    tickle: TickleSection | None = None
+    counter: CounterSection | None = None
+    scans: Mapping[str, ScanSection] = field(default_factory=dict)
+    schedule: tuple[DueSection, ...] = ()

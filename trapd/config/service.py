@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from pathlib import Path
 
 from trapd.config.electrodes import NAME, WANTED_NAME
 from trapd.config.records import (
-    DriveSection,
     ElectrodeSection,
     GuardSection,
     InstrumentSection,
@@ -19,6 +18,7 @@ from trapd.config.records import (
 from trapd.config.table import Mistakes, Table
 
 _LISTEN = re.compile(r"(?:\[(?P<v6>[0-9A-Fa-f:.]+)\]|(?P<host>[A-Za-z0-9.-]+)):(?P<port>[0-9]{1,5})")
+_WHOLE = 0  # in place of a channel, which is 1 or more
 _SOCKET_PATH_BYTES = 107  # sun_path of unix(7) less its closing zero
 
 
@@ -52,25 +52,26 @@ def _profile(table: Table, source: Path) -> str:
 
 
 def check_wiring(
-    drive: DriveSection,
+    owners: Mapping[str, str | None],
     electrodes: Iterable[ElectrodeSection],
     instruments: Iterable[str],
     mistakes: Mistakes,
 ) -> None:
-    """Notes instruments that are missing, idle or claimed twice. Only for a file that has instruments at all."""
+    """Notes instruments that are missing, idle or claimed twice. Only for a file that has instruments at all.
+
+    ``owners``: by section, the instrument that it has to itself.
+    """
     known, before = set(instruments), len(mistakes)
     users: dict[tuple[str, int | None], str] = {}
-    _claim("drive", drive.instrument, None, known, users, mistakes)
+    for section, instrument in owners.items():
+        _claim(section, instrument, _WHOLE, known, users, mistakes)
     for electrode in electrodes:
-        where = f"electrodes.{electrode.name}"
-        if electrode.instrument is not None and electrode.instrument == drive.instrument:
-            mistakes.note(f"{where}.instrument", f' = "{electrode.instrument}"; this one is the drive\'s')
-        else:
-            _claim(where, electrode.instrument, electrode.channel, known, users, mistakes)
+        _claim(f"electrodes.{electrode.name}", electrode.instrument, electrode.channel, known, users, mistakes)
     used = {name for name, _ in users}
     for name in instruments:
         if name not in used and len(mistakes) == before:  # after a wrong name it would be told twice
-            mistakes.note(f"instruments.{name}", ": neither the drive nor an electrode uses it; expected one that does")
+            users_are = "neither the drive, an electrode, [tickle] nor [counter]"
+            mistakes.note(f"instruments.{name}", f": {users_are} uses it; expected one that does")
 
 
 def _claim(
@@ -86,6 +87,8 @@ def _claim(
     elif instrument and instrument not in known:
         names = ", ".join(sorted(known)) or "none"
         mistakes.note(f"{where}.instrument", f' = "{instrument}"; expected one of [instruments]: {names}')
+    elif (instrument, _WHOLE) in users:
+        mistakes.note(f"{where}.instrument", f' = "{instrument}"; this one is the {users[instrument, _WHOLE]}\'s')
     elif (instrument, channel) in users:
         taken = f"; {users[instrument, channel]} has channel {channel} of this instrument already"
         mistakes.note(f"{where}.channel", f" = {channel}{taken}")

@@ -1,14 +1,17 @@
-"""Start: read the instruments, record what was found, compare with what was last commanded. Nothing is commanded."""
+"""Start: read the instruments, record what was found, compare with what was last commanded; and the tickle off, the one
+thing that a start commands."""
 
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, field
 
 from trapd.controller.activity import Activity
 from trapd.controller.desk import Desk
 from trapd.controller.drafts import DAEMON, contents_draft
 from trapd.controller.looking import look
+from trapd.controller.off import silencing
+from trapd.controller.situation import Claim, Measured, SchedulePause
 from trapd.record import Draft
 from trapd.setpoint import Contents, Values
 
@@ -17,7 +20,8 @@ from trapd.setpoint import Contents, Values
 class Remembered:
     """What the record of earlier runs says: the last commanded values and outputs, the contents, the state before.
 
-    ``open_intents``: intents without an outcome; nobody knows whether they were sent.
+    ``open_intents``: intents without an outcome; nobody knows whether they were sent. ``open_scan``: the entry of a scan
+    that never ended. ``claim`` and ``pause`` as last declared, ``measured`` by scan name.
     """
 
     values: Values
@@ -25,6 +29,10 @@ class Remembered:
     contents: Contents | None
     previous: Values | None
     open_intents: tuple[int, ...] = ()
+    open_scan: int | None = None
+    claim: Claim | None = None
+    pause: SchedulePause | None = None
+    measured: Mapping[str, Measured] = field(default_factory=dict)
 
 
 def adopting(remembered: Remembered) -> Callable[[Desk], Activity]:
@@ -33,7 +41,9 @@ def adopting(remembered: Remembered) -> Callable[[Desk], Activity]:
     def activity(desk: Desk) -> Activity:
         desk.change(values=dict(remembered.values), outputs=dict(remembered.outputs), previous=remembered.previous)
         contents, gone = _contents(desk, remembered)
-        desk.change(contents=contents)
+        desk.change(
+            contents=contents, claim=remembered.claim, pause=remembered.pause, measured=dict(remembered.measured)
+        )
         surveys = yield from look(desk)
         situation = desk.situation
         found = {
@@ -45,6 +55,8 @@ def adopting(remembered: Remembered) -> Callable[[Desk], Activity]:
             "no_longer_in_the_file": list(gone),
             "unreachable": dict(situation.unreachable),
             "open_intents": list(remembered.open_intents),
+            "open_scan": remembered.open_scan,
+            "tickling": situation.tickling,
         }
         drafts = [
             Draft(kind="identity", actor=DAEMON, data={"instrument": s.instrument, **asdict(s.identity)})
@@ -53,6 +65,7 @@ def adopting(remembered: Remembered) -> Callable[[Desk], Activity]:
         drafts.append(Draft(kind="found", actor=DAEMON, data=found))
         drafts.append(contents_draft(situation.contents, DAEMON, "after a start"))
         yield desk.note(*drafts)
+        yield from silencing(desk, DAEMON, "after a start")
         return found
 
     return activity

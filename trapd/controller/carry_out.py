@@ -38,12 +38,12 @@ def carry_out(command: Command, clock: Clock, *, live: bool) -> Callable[[Instru
         try:
             send(instrument, command.intent)
         except Exception as error:
-            return Carried(outcome=_failed(error, sent_us), at_ns=clock.monotonic_ns())
+            return Carried(outcome=failed(error, sent_us), at_ns=clock.monotonic_ns())
         acknowledged_us, at_ns = clock.now_us(), clock.monotonic_ns()
         try:
             outcome = _verified(instrument, command, clock, live)
         except Exception as error:
-            outcome = _failed(error, sent_us, acknowledged_us)
+            outcome = failed(error, sent_us, acknowledged_us)
         else:
             outcome = replace(outcome, sent_us=sent_us, acknowledged_us=acknowledged_us, verified_us=clock.now_us())
         return Carried(outcome=outcome, at_ns=at_ns)
@@ -51,7 +51,8 @@ def carry_out(command: Command, clock: Clock, *, live: bool) -> Callable[[Instru
     return job
 
 
-def _failed(error: Exception, sent_us: int, acknowledged_us: int | None = None) -> Outcome:
+def failed(error: Exception, sent_us: int, acknowledged_us: int | None = None) -> Outcome:
+    """What an instrument's error says of the command; a bug in a driver is no reason to lose the outcome."""
     state: OutcomeState = "unreachable"
     if isinstance(error, InstrumentRefused | OutOfRange):
         state = "not confirmed"

@@ -5,7 +5,6 @@ from __future__ import annotations
 import itertools
 import logging
 import threading
-from collections import deque
 from collections.abc import Callable
 from concurrent.futures import Future
 from contextlib import suppress
@@ -13,21 +12,21 @@ from dataclasses import replace
 from typing import Any
 
 from trapd.controller.activity import Activity
+from trapd.controller.claiming import IMMEDIATE, drop_what_is_over, revoking
 from trapd.controller.desk import RETRY_S, Desk
 from trapd.controller.drafts import DAEMON, unregistered_drafts
 from trapd.controller.kinds import ACTIVITIES
 from trapd.controller.looking import looking, no_longer_known
 from trapd.controller.mailbox import Mailbox, Urgency
 from trapd.controller.off import retrying_off, switching_off
+from trapd.controller.precedence import claimed_by_another, gives_way, stands_in_the_way
 from trapd.controller.running import Running
 from trapd.controller.situation import Situation
 from trapd.controller.ticket import Ticket
+from trapd.controller.waiting import MOST_WAITING, Waiting
 from trapd.errors import QueueFull, Superseded, TrapdError
 from trapd.record import Draft
 from trapd.setpoint import Request
-
-MOST_WAITING = 16
-"""Requests that may wait behind the one in progress; one more is answered 429."""
 
 TICK_S = 0.25
 """How often the thread looks at what is due (retries, the end of loading) when nothing else comes."""
@@ -49,13 +48,15 @@ class Controller:
         self._desk = desk
         desk.spawn = self._spawn
         self._mailbox = Mailbox()
-        self._waiting: deque[Ticket] = deque()
+        self._waiting = Waiting()
         self._current: Running | None = None
+        self._current_request: Request | None = None
         self._running: dict[int, Running] = {}
         self._numbers = itertools.count()
         self._due: list[tuple[int, Callable[[], None]]] = []
         self._ending = False
         self._retrying_off = False
+        self._next_off_ns = 0
         self._offs = 0
         self._adopted = False
         self._next_look_ns = 0
@@ -136,6 +137,8 @@ class Controller:
         if self._desk.unwritten and self._desk.retry_due_ns <= now_ns:
             self._desk.retry_due_ns = now_ns + int(RETRY_S * 1e9)
             self._desk.retry_unwritten()
+        if now_ns >= self._next_off_ns and self._offs == 0:
+            self._retry_off()
         idle = self._current is None and self._offs == 0 and not self._ending and self._adopted
         if idle and now_ns >= self._next_look_ns:
             self._next_look_ns = now_ns + int(IDLE_LOOK_S * 1e9)
@@ -172,41 +175,51 @@ class Controller:
 
         def ended() -> None:
             self._offs -= 1
-            self.schedule(RETRY_S, self._retry_off)
+            self._next_off_ns = self._desk.clock.monotonic_ns() + int(RETRY_S * 1e9)
+            if self._desk.situation.claim is not None:
+                self._spawn(revoking(self._desk, ticket.request.author, "everything was switched off"))
             self._next()
 
         self._offs += 1
         self._begin(switching_off(self._desk, ticket), finish, fail, to_the_end=True)
 
     def _stop(self, ticket: Ticket) -> None:
-        moving, busy = self._desk.situation.moving, self._current is not None
+        situation, busy, request = self._desk.situation, self._current is not None, ticket.request
+        under_way = situation.moving or situation.scanning
         self._supersede("a stop came first")
-        self._desk.note(
-            Draft(
-                kind="halt",
-                actor=ticket.request.author,
-                data={"why": ticket.request.why, "request": moving and moving.request},
-            )
-        )
+        data = {"why": request.why, "request": under_way and under_way.request}
+        self._desk.note(Draft(kind="halt", actor=request.author, data=data))
         ticket.finish({"stopped": busy, "values": dict(self._desk.situation.values)})
 
     def _request(self, ticket: Ticket) -> None:
+        request, running = ticket.request, self._current_request
+        drop_what_is_over(self._desk)
+        refusal = claimed_by_another(self._desk.situation.claim, request)
         if self._ending:
             self._fail(ticket, Superseded("the daemon is stopping; nothing was sent"))
-        elif len(self._waiting) >= MOST_WAITING:
+        elif refusal is not None:
+            self._fail(ticket, refusal)
+        elif request.kind in IMMEDIATE:
+            activity = IMMEDIATE[request.kind](self._desk, ticket)
+            self._begin(activity, ticket.finish, lambda error: self._fail(ticket, error))
+        elif (refusal := stands_in_the_way(running, request)) is not None:
+            self._fail(ticket, refusal)
+        elif self._waiting.is_full:
             self._fail(ticket, QueueFull(f"{MOST_WAITING} requests wait already; nothing was sent"))
         else:
-            self._waiting.append(ticket)
+            self._waiting.add(ticket)
+            if self._current is not None and gives_way(running, request):
+                self._current.throw(Superseded(f"{request.author} asked for something else; the scan ended there"))
             self._next()
 
     def _withdraw(self, ticket: Ticket) -> None:
-        if ticket in self._waiting:
-            self._waiting.remove(ticket)
+        if self._waiting.remove(ticket):
             self._fail(ticket, Superseded("whoever asked went away before its turn; nothing was sent"))
 
     def _next(self) -> None:
         if self._current is None and self._offs == 0 and self._desk.contents_open == 0 and self._waiting:
-            ticket = self._waiting.popleft()
+            ticket = self._waiting.next()
+            self._current_request = ticket.request
             activity = ACTIVITIES[ticket.request.kind](self._desk, ticket)
             # The slot is taken before the first step: an activity may end at once and ask for the next.
             self._current = running = self._new(activity, ticket.finish, lambda error: self._fail(ticket, error))
@@ -220,12 +233,12 @@ class Controller:
 
     def _supersede(self, why: str) -> None:
         """Stop what moves and answer what waits: the outputs hold where they are."""
-        waiting, self._waiting = list(self._waiting), deque()
-        for ticket in waiting:
+        for ticket in self._waiting.remove_all():
             self._fail(ticket, Superseded(f"{why}; nothing was sent"))
-        current, self._current = self._current, None
+        current, self._current, self._current_request = self._current, None, None
         if current is not None:
-            current.throw(Superseded(f"{why}; the move stopped where it was"))
+            ended = "the scan ended there" if self._desk.situation.scanning else "the move stopped where it was"
+            current.throw(Superseded(f"{why}; {ended}"))
 
     def _end(self) -> None:
         self._ending = True
@@ -240,8 +253,7 @@ class Controller:
 
     def _off_retried(self) -> None:
         self._retrying_off = False
-        if self._desk.situation.off_pending:
-            self.schedule(RETRY_S, self._retry_off)
+        self._next_off_ns = self._desk.clock.monotonic_ns() + int(RETRY_S * 1e9)
 
     def _spawn(self, activity: Activity, *, to_the_end: bool = False) -> None:
         self._begin(activity, lambda _: None, lambda _: None, to_the_end=to_the_end)
@@ -277,7 +289,7 @@ class Controller:
     def finished(self, running: Running) -> None:
         self._running.pop(running.number, None)
         if self._current is running:
-            self._current = None
+            self._current = self._current_request = None
         self._next()
 
     def post(self, act: Callable[[], None]) -> None:

@@ -1,4 +1,4 @@
-"""What the controller writes down, as drafts of entries. Pure."""
+"""What the controller writes down, as drafts of entries. Pure. (Those of a scan are in `scan_drafts`.)"""
 
 from __future__ import annotations
 

@@ -1,4 +1,5 @@
-"""Which activity answers which kind of request. off and stop never wait in the queue and are not here."""
+"""Which activity answers which kind of request. off and stop never wait in the queue and are not here, nor are
+claims and pauses (`claiming.IMMEDIATE`)."""
 
 from __future__ import annotations
 
@@ -8,6 +9,7 @@ from trapd.controller.activity import Activity
 from trapd.controller.declaring import declaring
 from trapd.controller.desk import Desk
 from trapd.controller.moving import changing
+from trapd.controller.scanning import scanning
 from trapd.controller.switching import emptying, switching_on
 from trapd.controller.ticket import Ticket
 
@@ -18,4 +20,5 @@ ACTIVITIES: Mapping[str, Callable[[Desk, Ticket], Activity]] = {
     "ions": declaring,
     "on": switching_on,
     "empty": emptying,
+    "scan": scanning,
 }

@@ -45,8 +45,10 @@ def look(desk: Desk, *, added: bool = False) -> Part:
         outputs = dict(before.outputs)
         for found in surveys:
             outputs.update(found.outputs)
+        tickling = next((found.tickling for found in surveys if found.tickling is not None), desk.situation.tickling)
         kept = desk.situation.doubt if added else ()
-        desk.change(values=_merged(desk, surveys), outputs=outputs, doubt=tuple(dict.fromkeys((*kept, *words))))
+        doubt = tuple(dict.fromkeys((*kept, *words)))
+        desk.change(values=_merged(desk, surveys), outputs=outputs, tickling=tickling, doubt=doubt)
     elif not events:
         return surveys
     if words and words != desk.last_words:

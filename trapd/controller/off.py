@@ -15,7 +15,7 @@ from trapd.controller.looking import follow_darkness, looking, no_longer_known
 from trapd.controller.ticket import Ticket
 from trapd.errors import TrapdError
 from trapd.record import Draft, SameCommit
-from trapd.setpoint import AMPLITUDE, Outcome
+from trapd.setpoint import AMPLITUDE, TICKLE_OUTPUT, Outcome
 from trapd.wiring import DRIVE_OUTPUT, output_of
 from trapd_drivers.interfaces import DcSupply, Instrument, RfSource
 
@@ -58,7 +58,7 @@ def retrying_off(desk: Desk) -> Activity:
     """Instruments that did not confirm `off` are tried again until they do."""
     began_ns = desk.clock.monotonic_ns()
     names = desk.situation.off_pending
-    jobs = {name: desk.submit(name, _off_job(desk, name), urgent=True) for name in names}
+    jobs = {name: _submit_off(desk, name) for name in names}
     report = {}
     for name, job in jobs.items():
         report[name] = yield from _answer(desk, job, OFF_S, began_ns)
@@ -71,14 +71,35 @@ def retrying_off(desk: Desk) -> Activity:
     return {}
 
 
+def silencing(desk: Desk, author: str, why: str, request: int | None = None) -> Activity:
+    """Tickle off, asked for again until it is; sent first and written down afterwards, as every off.
+
+    ``request``: the entry of the scan that ends so.
+    """
+    name = desk.wiring.tickle
+    if name is None:
+        return {"off": True}
+    job = _submit_off(desk, name)
+    found = yield from _answer(desk, job, OFF_S, desk.clock.monotonic_ns())
+    if not found["off"]:
+        _log.error("the tickle is not confirmed off by %s: %s; it is tried again", name, found["error"])
+        desk.change(off_pending=tuple(dict.fromkeys((*desk.situation.off_pending, name))))
+    desk.note(*_switched(desk, name, found, author, why, request, 0))
+    return {"off": found["off"], "error": found["error"]}
+
+
+def _submit_off(desk: Desk, name: str) -> Future[tuple[Confirmed, int]]:
+    return desk.submit(name, _off_job(desk, name), urgent=True)
+
+
 def _off_everywhere(desk: Desk, began_ns: int) -> Part:
     drive = desk.wiring.drive
     for worker in desk.workers.values():
         worker.cancel_pending()
-    rf = desk.submit(drive, _off_job(desk, drive), urgent=True)
+    jobs = {name: _submit_off(desk, name) for name in desk.wiring.with_outputs if name in (drive, desk.wiring.tickle)}
+    rf = jobs.pop(drive)
     report: dict[str, Any] = {drive: (yield from _answer(desk, rf, RF_FIRST_S, began_ns))}
-    supplies = [name for name in desk.workers if name != drive]
-    jobs = {name: desk.submit(name, _off_job(desk, name), urgent=True) for name in supplies}
+    jobs |= {name: _submit_off(desk, name) for name in desk.wiring.with_outputs if name not in (drive, *jobs)}
     for name, job in jobs.items():
         report[name] = yield from _answer(desk, job, _rest_s(desk, began_ns), began_ns)
     if not report[drive]["off"]:
@@ -94,23 +115,32 @@ def _rest_s(desk: Desk, began_ns: int) -> float:
 def _drafts(desk: Desk, author: str, why: str, report: Mapping[str, Any]) -> list[Draft]:
     """The entry, and for each output what was commanded and what came of it, as for any other command."""
     drafts = [Draft(kind="off", actor=author, data={"why": why, "instruments": dict(report)})]
-    for setpoint in (AMPLITUDE, *desk.wiring.electrodes):
-        intent = desk.wiring.output(setpoint, False).intent
-        if intent.instrument not in report:
-            continue
-        found = report[intent.instrument]
-        outcome = Outcome(
-            state="confirmed" if found["off"] else "not confirmed",
-            sent_us=found["sent_us"],
-            readback=0.0 if found["off"] else None,
-            difference=0.0 if found["off"] else None,
-            error=found["error"],
-        )
-        origin = {"request": SameCommit(0), "who": author, "why": why}
-        drafts.append(Draft(kind="intent", actor=author, data={**asdict(intent), **origin}))
-        intent_entry = SameCommit(len(drafts) - 1)
-        drafts.append(Draft(kind="outcome", actor=author, data={**asdict(outcome), "intent": intent_entry}))
+    for name, found in report.items():
+        drafts += _switched(desk, name, found, author, why, SameCommit(0), len(drafts))
     return drafts
+
+
+def _switched(
+    desk: Desk, name: str, found: Mapping[str, Any], author: str, why: str, request: int | SameCommit | None, first: int
+) -> list[Draft]:
+    """Intent and outcome of each output of one instrument; ``first`` is the place of the first of them in its commit."""
+    drafts: list[Draft] = []
+    for intent in desk.wiring.off_intents(name):
+        origin = {"request": request, "who": author, "why": why}
+        outcome = {**asdict(_outcome(found)), "intent": SameCommit(first + len(drafts))}
+        drafts.append(Draft(kind="intent", actor=author, data={**asdict(intent), **origin}))
+        drafts.append(Draft(kind="outcome", actor=author, data=outcome))
+    return drafts
+
+
+def _outcome(found: Mapping[str, Any]) -> Outcome:
+    return Outcome(
+        state="confirmed" if found["off"] else "not confirmed",
+        sent_us=found["sent_us"],
+        readback=0.0 if found["off"] else None,
+        difference=0.0 if found["off"] else None,
+        error=found["error"],
+    )
 
 
 def _off_job(desk: Desk, name: str) -> Callable[[Instrument], tuple[Confirmed, int]]:
@@ -124,7 +154,7 @@ def _off_job(desk: Desk, name: str) -> Callable[[Instrument], tuple[Confirmed, i
     def switch_off(instrument: Instrument) -> Confirmed:
         if isinstance(instrument, RfSource):
             instrument.set_output(False)
-            return {DRIVE_OUTPUT: instrument.read_output()}
+            return {DRIVE_OUTPUT if name == desk.wiring.drive else TICKLE_OUTPUT: instrument.read_output()}
         assert isinstance(instrument, DcSupply)
         failures: list[Exception] = []
         for channel in channels.values():
@@ -160,6 +190,9 @@ def _answer(desk: Desk, job: Future[tuple[Confirmed, int]], seconds: float, bega
 
 
 def _take(desk: Desk, confirmed: Confirmed) -> None:
+    if TICKLE_OUTPUT in confirmed:
+        desk.change(tickling=confirmed[TICKLE_OUTPUT])
+        return
     values = dict(desk.situation.values)
     for name, on in confirmed.items():
         if not on:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from concurrent.futures import Future
 from contextlib import suppress
 from dataclasses import asdict, dataclass
@@ -14,13 +15,13 @@ from trapd.controller.looking import looking
 from trapd.controller.ticket import Ticket
 from trapd.errors import Bug, Superseded, TrapdError
 from trapd.record import Draft, Entry
-from trapd.setpoint import Ramp, Verdict
-from trapd.wiring import Command
+from trapd.setpoint import Intent, Ramp, Verdict
 
 
 @dataclass(frozen=True, kw_only=True)
 class Origin:
-    """What every intent of a move refers to: the entries it came from, who and why."""
+    """What every intent of a move or a scan refers to: the entries it came from, who and why. ``ramp``: the judged way,
+    a scan's plan included."""
 
     request: int
     verdict: int
@@ -28,39 +29,51 @@ class Origin:
     author: str
     why: str
 
-    def intent(self, command: Command) -> Draft:
+    def intent(self, intent: Intent, step: int, **more: Any) -> Draft:
+        """``more``: what the intent says beyond its table."""
         data = {
-            **asdict(command.intent),
+            **asdict(intent),
             "request": self.request,
             "verdict": self.verdict,
             "ramp": self.ramp,
-            "step": command.step,
+            "step": step,
             "who": self.author,
             "why": self.why,
+            **more,
         }
         return Draft(kind="intent", actor=self.author, data=data)
 
 
 def register(desk: Desk, ticket: Ticket, verdict: Verdict, ramp: Ramp | None) -> Part:
     """Request, verdict and ramp in one commit. Tells whoever asked; returns the `Origin` of the move's intents."""
+    if ramp is None:
+        return (yield from enter(desk, ticket, verdict, None, {}))
+    told = {"duration_s": ramp.duration_s, "steps": len(ramp.steps)}
+    return (yield from enter(desk, ticket, verdict, ramp_draft(ticket.request, ramp), told))
+
+
+def enter(
+    desk: Desk, ticket: Ticket, verdict: Verdict, way: Draft | None, told: Mapping[str, Any], *more: Draft
+) -> Part:
+    """Request, verdict and the judged way of an accepted request in one commit, with ``more``; without a way it is refused
+    and nothing follows. Tells whoever asked, ``told`` included."""
     yield from desk.write_what_waits()
     request = ticket.request
     drafts = [request_draft(request), verdict_draft(request, verdict)]
-    if ramp is not None:
-        drafts.append(ramp_draft(request, ramp))
+    if way is not None:
+        drafts += [way, *more]
     entries: tuple[Entry, ...] = yield from commit(desk, ticket, drafts)
     origin = Origin(
         request=entries[0].seq,
         verdict=entries[1].seq,
-        ramp=entries[2].seq if ramp is not None else None,
+        ramp=None if way is None else entries[2].seq,
         author=request.author,
         why=request.why,
     )
-    if ramp is None:
+    if way is None:
         ticket.tell(refusal(verdict, origin.request))
     else:
-        accepted = {"entry": origin.request, "accepted": True, "verdict": asdict(verdict)}
-        ticket.tell({**accepted, "duration_s": ramp.duration_s, "steps": len(ramp.steps)})
+        ticket.tell({"entry": origin.request, "accepted": True, "verdict": asdict(verdict), **told})
     return origin
 
 
@@ -96,7 +109,7 @@ def refusal(verdict: Verdict, entry: int) -> dict[str, Any]:
 def conclude(desk: Desk, origin: Origin, part: Part, *, returns: bool = True) -> Activity:
     """Run a part of an activity to its end, however it ends, and write down how it ended; the answer of the request.
 
-    ``returns``: `back` may lead to where this move began.
+    ``returns``: `back` may lead to where this move began. What the part returns is in the answer.
     """
     start = desk.situation.values
 
@@ -106,7 +119,7 @@ def conclude(desk: Desk, origin: Origin, part: Part, *, returns: bool = True) ->
         return result_draft(origin.author, origin.request, start, end, returns=moved, error=error)
 
     try:
-        yield from part
+        more = yield from part
     except Exception as error:
         known = error if isinstance(error, TrapdError) else Bug(f"{type(error).__name__}: {error}")
         desk.note(result(known))
@@ -115,11 +128,12 @@ def conclude(desk: Desk, origin: Origin, part: Part, *, returns: bool = True) ->
             desk.spawn(looking(desk))
         raise
     finally:
-        desk.change(moving=None)
+        desk.change(moving=None, scanning=None)
     if not returns:
         desk.change(previous=None, doubt=())  # everything has been commanded anew
     elif dict(desk.situation.values) != dict(start):
         desk.change(previous=dict(start))
     with suppress(TrapdError):  # done is done; if that could not be written it is kept and written later
         yield desk.note(result(None))
-    return {"entry": origin.request, "accepted": True, "state": "done", "values": dict(desk.situation.values)}
+    answer = {"entry": origin.request, "accepted": True, "state": "done", "values": dict(desk.situation.values)}
+    return answer | (more or {})

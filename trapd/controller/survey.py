@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 
 from trapd.guard.model import GuardModel
 from trapd.physics.resonator import gain_at
-from trapd.setpoint import AMPLITUDE, FREQUENCY, Values, unit_of
+from trapd.setpoint import AMPLITUDE, FREQUENCY, TICKLE_OUTPUT, Values, unit_of
 from trapd.wiring import DRIVE_OUTPUT, Wiring, output_of
 from trapd_drivers.errors import DriverError
 from trapd_drivers.interfaces import DcSupply, Identity, Instrument, RfSource
@@ -16,8 +16,8 @@ from trapd_drivers.interfaces import DcSupply, Identity, Instrument, RfSource
 @dataclass(frozen=True, kw_only=True)
 class Survey:
     """One instrument as found. ``programmed`` by setpoint in instrument units, ``outputs`` by output name.
-
-    ``failure``: it reported events, which it does only once, and then did not answer any more.
+    ``tickling``: whether the tickle's output is on, None for any other instrument. ``failure``: it reported events,
+    which it does only once, and then did not answer any more.
     """
 
     instrument: str
@@ -27,6 +27,7 @@ class Survey:
     tripped: tuple[int, ...]
     programmed: Mapping[str, float] = field(default_factory=dict)
     outputs: Mapping[str, bool] = field(default_factory=dict)
+    tickling: bool | None = None
     failure: str | None = None
 
 
@@ -50,6 +51,7 @@ def survey_job(wiring: Wiring, name: str) -> Callable[[Instrument], Survey]:
     def job(instrument: Instrument) -> Survey:
         identity = instrument.read_identity()
         programmed, outputs = state(instrument)
+        tickling = instrument.read_output() if isinstance(instrument, RfSource) and name == wiring.tickle else None
         status = instrument.read_status()
         failure = None
         if status.power_on or status.tripped:  # what was read before may be from before
@@ -65,6 +67,7 @@ def survey_job(wiring: Wiring, name: str) -> Callable[[Instrument], Survey]:
             tripped=status.tripped,
             programmed=programmed,
             outputs=outputs,
+            tickling=tickling,
             failure=failure,
         )
 
@@ -97,6 +100,8 @@ def differences(
     words = []
     for found in surveys:
         words += reports(found)
+        if found.tickling:
+            words.append(f"{TICKLE_OUTPUT} is on, last commanded off")
         for name, on in found.outputs.items():
             if name in outputs and outputs[name] != on:
                 words.append(f"{name} is {_on(on)}, last commanded {_on(outputs[name])}")

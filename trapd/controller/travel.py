@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from concurrent.futures import Future
 from contextlib import suppress
 
@@ -42,7 +42,7 @@ def run(desk: Desk, origin: Origin, commands: Iterable[Command], steps: int = 0)
     command = next(upcoming, None)
     intent: int | None = None
     if command is not None:
-        intent = yield from _commit(desk, origin, [], command)
+        intent = yield from commit_next(desk, origin, [], origin.intent(command.intent, command.step))
     while command is not None and intent is not None:
         _tell_moving(desk, origin, command, steps)
         carried: Carried = yield from _send(desk, origin, command, intent)
@@ -54,7 +54,7 @@ def run(desk: Desk, origin: Origin, commands: Iterable[Command], steps: int = 0)
             _raise_unless_arrived(command, carried.outcome)
             intent = None
         else:
-            intent = yield from _commit(desk, origin, happened, following)
+            intent = yield from commit_next(desk, origin, happened, origin.intent(following.intent, following.step))
         yield from _wait(desk, origin, command, carried.at_ns, intent)
         command = following
 
@@ -72,10 +72,10 @@ def _wait(desk: Desk, origin: Origin, command: Command, at_ns: int, intent: int 
         raise
 
 
-def _commit(desk: Desk, origin: Origin, happened: list[Draft], command: Command) -> Part:
-    """What happened and what follows, in one commit; the seq of the intent. What happened is never lost; without the
+def commit_next(desk: Desk, origin: Origin, happened: Sequence[Draft], intent: Draft) -> Part:
+    """What happened and the intent that follows, in one commit; the intent's seq. What happened is never lost; without the
     commit nothing follows."""
-    future = desk.record.append(*happened, origin.intent(command))
+    future = desk.record.append(*happened, intent)
     try:
         entries: tuple[Entry, ...] = yield future
     except Superseded as error:
@@ -89,7 +89,7 @@ def _commit(desk: Desk, origin: Origin, happened: list[Draft], command: Command)
 
 
 def _withdraw(
-    desk: Desk, origin: Origin, future: Future[tuple[Entry, ...]], happened: list[Draft], why: str
+    desk: Desk, origin: Origin, future: Future[tuple[Entry, ...]], happened: Sequence[Draft], why: str
 ) -> Activity:
     """The last intent was being written when the move was stopped: say that it was not sent."""
     try:

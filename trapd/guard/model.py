@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 
@@ -31,13 +32,26 @@ class Limit:
 
 
 @dataclass(frozen=True, kw_only=True)
+class TickleLimits:
+    """What the tickle may be told: levels (V, zero to peak, at the generator) up to ``level_max_v`` in steps of
+    ``level_resolution_v`` (0: unknown), frequencies and burst times within the generator's ranges. ``burst_s`` None: it
+    cannot do bursts, or nobody knows yet."""
+
+    level_max_v: float
+    level_resolution_v: float = 0.0
+    frequency_hz: tuple[float, float] = (0.0, math.inf)
+    burst_s: tuple[float, float] | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
 class GuardModel:
     """Everything a verdict depends on besides the state itself and the contents of the trap.
 
     ``limits`` has ``drive.frequency``, ``drive.amplitude`` and every electrode, in the order of the file. ``resonator``
     turns synthesizer volts into electrode volts (a flat gain is a resonator of infinite width). ``frequency_fixed``: the
     drive frequency must not move while ions are held (flat gain: nothing says what the amplitude would do).
-    ``margin`` is relative. ``min_secular_frequency_hz`` and ``min_depth_ev`` are None when the file does not ask.
+    ``margin`` is relative. ``tickle`` None: the trap has none. ``min_secular_frequency_hz`` and ``min_depth_ev`` are
+    None when the file does not ask.
     """
 
     trap: Trap
@@ -50,3 +64,4 @@ class GuardModel:
     margin: float
     min_secular_frequency_hz: float | None = None
     min_depth_ev: float | None = None
+    tickle: TickleLimits | None = None

@@ -12,6 +12,9 @@ MARGIN = "margin"
 MIN_SECULAR_FREQUENCY = "min_secular_frequency"
 MIN_DEPTH = "min_depth"
 PATH = "path"
+TICKLE_LEVEL = "tickle_level"
+TICKLE_BAND = "tickle_band"
+TICKLE_BURST = "tickle_burst"
 
 RULES: dict[str, str] = {
     LIMIT: "the value lies between min and max of its setpoint, at the top of the gain's uncertainty",
@@ -24,4 +27,7 @@ RULES: dict[str, str] = {
     MIN_SECULAR_FREQUENCY: "every secular frequency is at least min_secular_frequency",
     MIN_DEPTH: "the well is at least min_depth deep",
     PATH: "the whole way there obeys the rules above, one setpoint at a time",
+    TICKLE_LEVEL: "a tickle is no stronger than tickle.level_max, nor than its generator can give",
+    TICKLE_BAND: "a tickle stays within its generator's range and under half the drive frequency",
+    TICKLE_BURST: "a tickle comes in bursts that its generator ends by itself",
 }

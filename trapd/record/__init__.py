@@ -5,17 +5,21 @@ copies it out. The only package that imports SQLAlchemy.
 """
 
 from trapd.record.ask import Commanded, Reader, Refusal, State
+from trapd.record.ask_scans import DueRun, EndedScan, ScanPoint, SecularFrequency
 from trapd.record.entry import KINDS, NO_DIGEST, Draft, Entry, Head, SameCommit, rfc3339
-from trapd.record.export import FORMATS, export
+from trapd.record.export import EXPORTED, FORMATS, export
 from trapd.record.verify import Problem, Report, verify
 from trapd.record.writer import Record
 
 __all__ = [
+    "EXPORTED",
     "FORMATS",
     "KINDS",
     "NO_DIGEST",
     "Commanded",
     "Draft",
+    "DueRun",
+    "EndedScan",
     "Entry",
     "Head",
     "Problem",
@@ -24,6 +28,8 @@ __all__ = [
     "Refusal",
     "Report",
     "SameCommit",
+    "ScanPoint",
+    "SecularFrequency",
     "State",
     "export",
     "rfc3339",

@@ -2,23 +2,17 @@
 
 from __future__ import annotations
 
-import sqlite3
-from collections.abc import Callable, Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
-from sqlalchemy import Connection, Engine, Select, Table, and_, or_, select, tuple_
-from sqlalchemy.exc import DBAPIError
+from sqlalchemy import Connection, Select, and_, or_, select, tuple_
 
-from trapd.errors import NotFound, RecordFailed
-from trapd.record.connection import failure, reading_engine
+from trapd.errors import NotFound
+from trapd.record.ask_scans import ScanQuestions
 from trapd.record.entry import NO_DIGEST, Entry, Head, Stored, entry_of
-from trapd.record.schema import demand_current
+from trapd.record.reading import MANY, between, matching
 from trapd.record.tables import entries, intents, refusals, setpoints
-
-_MANY = 1000
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -88,40 +82,8 @@ class State:
     contents: Entry | None
 
 
-class Reader:
+class Reader(ScanQuestions):
     """Read-only. Safe to use from several threads; each call sees the record at one moment."""
-
-    def __init__(self, path: Path, engine: Engine) -> None:
-        """Use `open`."""
-        self.path = path
-        self._engine = engine
-
-    @classmethod
-    def open(cls, path: Path, *, text: Callable[[bytes], str] = bytes.decode) -> Reader:
-        """Raises `NotFound`, `ConfigError` (not a record, or of another schema), `RecordFailed`.
-
-        ``text`` decodes what is stored as text.
-        """
-        path = path.resolve()
-        if not path.exists():
-            raise NotFound(f"there is no record at {path}")
-        reader = cls(path, reading_engine(path, text))
-        try:
-            with reader.reading() as connection:
-                demand_current(connection, path)
-        except BaseException:
-            reader.close()
-            raise
-        return reader
-
-    def close(self) -> None:
-        self._engine.dispose()
-
-    def __enter__(self) -> Reader:
-        return self
-
-    def __exit__(self, *_: object) -> None:
-        self.close()
 
     def head(self) -> Head:
         """Seq and digest of the newest entry."""
@@ -141,7 +103,7 @@ class Reader:
         self,
         *,
         after: int = 0,
-        limit: int = _MANY,
+        limit: int = MANY,
         kind: str | None = None,
         actor: str | None = None,
         since_us: int | None = None,
@@ -150,15 +112,15 @@ class Reader:
     ) -> tuple[Entry, ...]:
         """At most ``limit`` entries beyond seq ``after``, in order: the first ones, or with ``newest`` the last."""
         query = select(entries).where(entries.c.seq > after)
-        query = _matching(query, entries, kind=kind, actor=actor)
-        query = _between(query, entries, since_us, until_us)
-        return tuple(entry_of(Stored(*row)) for row in self._page(query, entries, limit, newest))
+        query = matching(query, entries, kind=kind, actor=actor)
+        query = between(query, entries.c.time_us, since_us, until_us)
+        return tuple(entry_of(Stored(*row)) for row in self.page(query, entries, limit, newest))
 
     def setpoints(
         self,
         *,
         after: int = 0,
-        limit: int = _MANY,
+        limit: int = MANY,
         setpoint: str | None = None,
         state: str | None = None,
         who: str | None = None,
@@ -168,15 +130,15 @@ class Reader:
     ) -> tuple[Commanded, ...]:
         """Intents and what came of them, in order of seq; times are those of the intents."""
         query = _commanded().where(setpoints.c.seq > after)
-        query = _matching(query, setpoints, setpoint=setpoint, state=state, who=who)
-        query = _between(query, setpoints, since_us, until_us)
-        return tuple(Commanded(**row._mapping) for row in self._page(query, setpoints, limit, newest))
+        query = matching(query, setpoints, setpoint=setpoint, state=state, who=who)
+        query = between(query, setpoints.c.time_us, since_us, until_us)
+        return tuple(Commanded(**row._mapping) for row in self.page(query, setpoints, limit, newest))
 
     def refusals(
         self,
         *,
         after: int = 0,
-        limit: int = _MANY,
+        limit: int = MANY,
         who: str | None = None,
         since_us: int | None = None,
         until_us: int | None = None,
@@ -184,8 +146,8 @@ class Reader:
     ) -> tuple[Refusal, ...]:
         """One for each rule that failed, in order of the verdicts' seq."""
         query = select(*(refusals.c[name] for name in Refusal.__dataclass_fields__)).where(refusals.c.seq > after)
-        query = _between(_matching(query, refusals, who=who), refusals, since_us, until_us)
-        return tuple(Refusal(**row._mapping) for row in self._page(query, refusals, limit, newest))
+        query = between(matching(query, refusals, who=who), refusals.c.time_us, since_us, until_us)
+        return tuple(Refusal(**row._mapping) for row in self.page(query, refusals, limit, newest))
 
     def state_at(self, *, seq: int | None = None, time_us: int | None = None) -> State:
         """What had been commanded by entry ``seq``, by ``time_us``, or by now."""
@@ -213,34 +175,6 @@ class Reader:
         """The newest entry of kind "contents" by entry ``seq``, by ``time_us``, or by now."""
         with self.reading() as connection:
             return _contents(connection, _last_seq(connection, seq, time_us))
-
-    @contextmanager
-    def reading(self) -> Iterator[Connection]:
-        """A connection on which every query sees the record at one moment. For this package."""
-        try:
-            with self._engine.connect() as connection:
-                yield connection
-        except (DBAPIError, sqlite3.Error) as error:
-            raise failure(error, self.path, "nothing more was read", RecordFailed) from error
-
-    def _page(self, query: Select[Any], table: Table, limit: int, newest: bool) -> list[Any]:
-        order = table.c.seq.desc() if newest else table.c.seq
-        with self.reading() as connection:
-            rows = list(connection.execute(query.order_by(order).limit(limit)))
-        return rows[::-1] if newest else rows
-
-
-def _matching(query: Select[Any], table: Table, **wanted: str | None) -> Select[Any]:
-    return query.where(*(table.c[column] == value for column, value in wanted.items() if value is not None))
-
-
-def _between(query: Select[Any], table: Table, since_us: int | None, until_us: int | None) -> Select[Any]:
-    """From ``since_us`` on, before ``until_us``."""
-    if since_us is not None:
-        query = query.where(table.c.time_us >= since_us)
-    if until_us is not None:
-        query = query.where(table.c.time_us < until_us)
-    return query
 
 
 def _commanded() -> Select[Any]:

@@ -37,8 +37,16 @@ KINDS = (
     "clock",  # the wall clock stepped against the monotonic clock
     "heartbeat",  # somebody watched and nothing happened
     "stop",  # the daemon stopped in order
+    "plan",  # how a scan that was asked for will go about it
+    "scan_point",  # what was counted at one frequency of a scan; typed table `scan_points`
+    "estimate",  # what a scan makes of its points so far, after each pass
+    "finding",  # how a scan ended; view `scans`
+    "secular_frequency",  # the frequency of a finding that found one; typed table `secular_frequencies`
+    "due_run",  # what became of a time at which a scan was due; typed table `due_runs`
+    "claim",  # somebody takes the trap for themselves, or gives it back
+    "pause",  # somebody stops the schedule, or lets it go on
 )
-"""The kinds in use. The record takes any other kind as well; only ``intent`` and ``outcome`` have typed tables."""
+"""The kinds in use. The record takes any other kind as well; `typed` says which have typed tables."""
 
 NO_DIGEST = "0" * 64
 """What the first entry gives as its previous digest, and the head of an empty record."""

@@ -9,7 +9,7 @@ from sqlalchemy import Connection
 import trapd
 from trapd.errors import ConfigError
 
-SCHEMA = "0001"
+SCHEMA = "0002"
 """The newest migration: what this trapd reads and writes."""
 
 APPLICATION_ID = 1953653104

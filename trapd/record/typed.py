@@ -91,5 +91,55 @@ _OUTCOMES = (
     ("difference", _or_none(_REAL)),
     ("error", _or_none(_TEXT)),
 )
-_TABLES = {"intent": ("intents", _INTENTS), "outcome": ("outcomes", _OUTCOMES)}
+_SCAN_POINTS = (
+    ("request", _INTEGER),
+    ("intent", _or_none(_INTEGER)),
+    ("pass_number", _INTEGER),
+    ("point", _INTEGER),
+    ("frequency_hz", _or_none(_REAL)),
+    ("level_v", _REAL),
+    ("dwell_s", _REAL),
+    ("counts", _INTEGER),
+    ("at_us", _INTEGER),
+)
+_SECULAR_FREQUENCIES = (
+    ("request", _INTEGER),
+    ("finding", _INTEGER),
+    ("scan", _TEXT),
+    ("species", _TEXT),
+    ("mode", _TEXT),
+    ("frequency_hz", _REAL),
+    ("uncertainty_hz", _REAL),
+    ("low_95_hz", _REAL),
+    ("high_95_hz", _REAL),
+    ("at_us", _INTEGER),
+    ("predicted_hz", _REAL),
+    ("predicted_uncertainty_hz", _REAL),
+    ("width_hz", _REAL),
+    ("contrast", _REAL),
+    ("likelihood_ratio", _REAL),
+    ("method", _TEXT),
+    ("fit_version", _TEXT),
+    ("calibration", _or_none(_INTEGER)),
+    ("flags", _TEXT),
+    ("points", _INTEGER),
+    ("who", _TEXT),
+    ("why", _TEXT),
+)
+_DUE_RUNS = (
+    ("schedule", _TEXT),
+    ("scan", _TEXT),
+    ("due_us", _INTEGER),
+    ("state", _TEXT),
+    ("late_s", _REAL),
+    ("request", _or_none(_INTEGER)),
+    ("reason", _TEXT),
+)
+_TABLES = {
+    "intent": ("intents", _INTENTS),
+    "outcome": ("outcomes", _OUTCOMES),
+    "scan_point": ("scan_points", _SCAN_POINTS),
+    "secular_frequency": ("secular_frequencies", _SECULAR_FREQUENCIES),
+    "due_run": ("due_runs", _DUE_RUNS),
+}
 TYPED_TABLES = tuple(table for table, _ in _TABLES.values())

@@ -1,8 +1,8 @@
 """`verify`: prove a record from its bodies alone. Streams the file once, in one snapshot, beside a running writer too.
 
 Checked: SQLite's own integrity; that every table, trigger and view is as the migrations make it; the chain; every
-column against the hashed body; every typed row against its entry, both ways; that an outcome's intent, and an intent's
-request, verdict and ramp, are what they should be. Not provable from the file: that nobody rewrote all of it, or cut
+column against the hashed body; every typed row against its entry, both ways; that what a row refers to (an outcome's
+intent, a frequency's finding) is what it should be. Not provable from the file: that nobody rewrote all of it, or cut
 off its end. That is found only by a chain head noted elsewhere, given as ``head``.
 """
 
@@ -19,19 +19,25 @@ from trapd.errors import Bug, RecordFailed
 from trapd.record.ask import Reader
 from trapd.record.entry import NO_DIGEST, Head, Stored, faults_of, same
 from trapd.record.schema import migrate
-from trapd.record.tables import entries, metadata, outcomes
+from trapd.record.tables import entries, metadata, outcomes, secular_frequencies
 from trapd.record.typed import TYPED_TABLES, TypedRow, typed_row
 
 _START = Head(0, NO_DIGEST)
 _MOST_PROBLEMS = 100
 _ROWS = 1000
-_REFERENCES = (
-    ("intents", "request", None),
-    ("intents", "verdict", "verdict"),
-    ("intents", "ramp", "ramp"),
-    ("outcomes", "intent", "intent"),
+_REFERENCES: tuple[tuple[str, str, tuple[str, ...]], ...] = (
+    ("intents", "request", ()),
+    ("intents", "verdict", ("verdict",)),
+    ("intents", "ramp", ("ramp", "plan")),
+    ("outcomes", "intent", ("intent",)),
+    ("scan_points", "request", ()),
+    ("scan_points", "intent", ("intent",)),
+    ("secular_frequencies", "request", ()),
+    ("secular_frequencies", "finding", ("finding",)),
+    ("secular_frequencies", "calibration", ()),
+    ("due_runs", "request", ()),
 )
-"""Table, column, and the kind of the entry it must name (None: any)."""
+"""Table, column, and the kinds of which the entry it names must be (empty: any)."""
 
 
 class Problem(NamedTuple):
@@ -124,16 +130,17 @@ def _objects(connection: Connection) -> dict[tuple[str, str], str | None]:
 
 
 def _check_references(connection: Connection, found: _Findings) -> None:
-    for table, column, kind in _REFERENCES:
+    for table, column, kinds in _REFERENCES:
         to = metadata.tables[table].c[column]
         seq = metadata.tables[table].c.seq
-        wrong = or_(entries.c.seq.is_(None), entries.c.seq >= seq, entries.c.kind != kind if kind else false())
+        wrong = or_(entries.c.seq.is_(None), entries.c.seq >= seq, entries.c.kind.not_in(kinds) if kinds else false())
         query = select(seq, to).outerjoin(entries, entries.c.seq == to).where(to.is_not(None), wrong)
         for row in connection.execute(query):
-            found.add(row[0], table, f"{column} is {row[1]}, which is no {kind or 'entry'} before it")
-    twice = select(func.max(outcomes.c.seq), outcomes.c.intent).group_by(outcomes.c.intent).having(func.count() > 1)
-    for seq, intent in connection.execute(twice):
-        found.add(seq, "outcomes", f"intent {intent} has an outcome already")
+            found.add(row[0], table, f"{column} is {row[1]}, which is no {' or '.join(kinds) or 'entry'} before it")
+    for of in (outcomes.c.intent, secular_frequencies.c.finding):
+        twice = select(func.max(of.table.c.seq), of).group_by(of).having(func.count() > 1)
+        for seq, earlier in connection.execute(twice):
+            found.add(seq, of.table.name, f"{of.name} {earlier} has a row already")
 
 
 def _check_entries(connection: Connection, found: _Findings, head: str | None) -> None:

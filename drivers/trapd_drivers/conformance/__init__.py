@@ -2,22 +2,28 @@
 
 On the command line: ``python -m trapd_drivers.conformance DRIVER RESOURCE [--profile P] [--allow-output]``; in a test:
 ``assert_conforms(driver_class("my-driver"), "TCPIP::192.0.2.7::5025::SOCKET")``. It runs against a simulated rack or a
-real bench. Without permission nothing is set; with it, values near zero are set, outputs are switched, and all of it
-is put back. One check for each clause; a clause that cannot be tried says why.
+real bench. Without permission nothing is set; with it, values near zero are set, outputs are switched, bursts
+and counts started, and all of it is put back. One check for each clause; a clause that cannot be tried says why.
 """
 
 from __future__ import annotations
 
 from contextlib import closing
 
-from trapd_drivers.conformance import session_clauses, setting_clauses
+from trapd_drivers.conformance import burst_clauses, counter_clauses, gauge_clauses, session_clauses, setting_clauses
 from trapd_drivers.conformance.controls import Settings
 from trapd_drivers.conformance.report import Outcome, Report, Result
 from trapd_drivers.conformance.trial import Bench, Broken, Check, NotTried, Trial
 from trapd_drivers.errors import DriverError
 from trapd_drivers.registry import DriverClass
 
-CLAUSES: tuple[Check, ...] = (*session_clauses.CLAUSES, *setting_clauses.CLAUSES)
+CLAUSES: tuple[Check, ...] = (
+    *session_clauses.CLAUSES,
+    *setting_clauses.CLAUSES,
+    *burst_clauses.CLAUSES,
+    *counter_clauses.CLAUSES,
+    *gauge_clauses.CLAUSES,
+)
 """One for each clause, in the contract's order; the docstring of each is its title."""
 
 

@@ -19,7 +19,11 @@ def main(arguments: list[str] | None = None) -> int:
     parser.add_argument("resource", help="TCPIP::HOST::PORT::SOCKET")
     parser.add_argument("--profile", default="plain", help="dialect profile: a shipped name or a .toml file")
     parser.add_argument("--timeout", type=float, default=0.5, metavar="S", help="the driver's timeout in seconds")
-    parser.add_argument("--allow-output", action="store_true", help="set values near zero and switch outputs; put back")
+    parser.add_argument(
+        "--allow-output",
+        action="store_true",
+        help="set values near zero, switch outputs, start bursts and counts; put back",
+    )
     chosen = parser.parse_args(arguments)
     try:
         bench = Bench(

@@ -1,4 +1,4 @@
-"""An instrument's controls as a list, so that one check serves RF sources and DC supplies."""
+"""An instrument's controls as a list, so that one check serves every kind of instrument."""
 
 from __future__ import annotations
 
@@ -6,7 +6,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from functools import partial
 
-from trapd_drivers.interfaces import DcSupply, Instrument, RfSource, Scale
+from trapd_drivers.interfaces import DcSupply, Gauge, Instrument, PhotonCounter, RfSource, Scale
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -71,14 +71,25 @@ def switches(instrument: Instrument) -> tuple[Switch, ...]:
     return ()
 
 
+def starts(instrument: Instrument) -> tuple[Callable[[], None], ...]:
+    """What begins a burst or a count, the shortest there is."""
+    if isinstance(instrument, RfSource) and instrument.burst is not None:
+        return (partial(instrument.start_burst, instrument.burst.low),)
+    if isinstance(instrument, PhotonCounter):
+        return (partial(instrument.start_count, instrument.gate.low),)
+    return ()
+
+
 def readings(instrument: Instrument) -> tuple[Callable[[], object], ...]:
-    """Every method that only asks."""
+    """Every method that only asks, but for `read_count`, which first wants a count."""
     return (
         instrument.read_identity,
         instrument.read_status,
         *(knob.read for knob in knobs(instrument)),
         *(knob.measure for knob in knobs(instrument) if knob.measure is not None),
         *(switch.read for switch in switches(instrument)),
+        *((instrument.read_burst,) if isinstance(instrument, RfSource) else ()),
+        *((instrument.read_value,) if isinstance(instrument, Gauge) else ()),
     )
 
 

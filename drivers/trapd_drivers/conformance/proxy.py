@@ -30,8 +30,9 @@ class Proxy:
     """Forwards to ``resource``; its own `resource` is what the driver opens. Change its attributes at any time.
 
     ``mode``: hang swallows what the driver sends, babble and trickle answer it with bytes without end. ``identity``
-    answers ``*IDN?`` in the instrument's place and swallows commands. ``delay_next_reply_s``, ``refuse_next_command``
-    and ``power_on`` act once: a late reply; nonsense in place of the command; the power-on bit in the ``*ESR?`` reply.
+    answers ``*IDN?`` in the instrument's place and swallows commands. ``delay_next_reply_s``, ``refuse_next_command``,
+    ``next_reply`` and ``power_on`` act once: a late reply; nonsense in place of the command that comes after as many as
+    ``pass_first``; this in place of a reply; the power-on bit in the ``*ESR?`` reply.
     """
 
     def __init__(self, resource: str) -> None:
@@ -46,6 +47,8 @@ class Proxy:
         self.identity: str | None = None
         self.delay_next_reply_s = 0.0
         self.refuse_next_command = False
+        self.pass_first = 0
+        self.next_reply: str | None = None
         self.power_on = False
         self._closed = threading.Event()
         self._pairs: list[tuple[socket.socket, socket.socket]] = []
@@ -134,6 +137,9 @@ class Proxy:
             return [message]
         if self.identity is not None:
             return [queries] if queries else []
+        if self.pass_first:
+            self.pass_first -= 1
+            return [message]
         self.refuse_next_command = False
         return [_NONSENSE, queries] if queries else [_NONSENSE]
 
@@ -151,6 +157,8 @@ class Proxy:
         end = reply[len(reply.rstrip()) :]
         if self.identity is not None and b"*IDN?" in self._last_query.upper():
             return self.identity.encode("ascii") + end
+        if self.next_reply is not None:
+            reply, self.next_reply = self.next_reply.encode("ascii") + end, None
         if self.power_on and b"*ESR?" in self._last_query.upper():
             self.power_on = False
             return str(int(reply) | 128).encode("ascii") + end

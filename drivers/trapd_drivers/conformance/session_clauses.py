@@ -8,11 +8,11 @@ from collections.abc import Callable
 from contextlib import closing
 from functools import partial
 
-from trapd_drivers.conformance.controls import Settings, knobs, readings, switches
+from trapd_drivers.conformance.controls import Settings, knobs, readings, starts, switches
 from trapd_drivers.conformance.proxy import Mode
 from trapd_drivers.conformance.trial import SLACK_S, Broken, Trial, failure_of, name_of, require, timed
 from trapd_drivers.errors import Unreachable, WrongIdentity
-from trapd_drivers.interfaces import Instrument
+from trapd_drivers.interfaces import Gauge, Instrument, PhotonCounter, RfSource
 
 _STRANGER = "SOMEBODY ELSE,OTHER,0,0"
 
@@ -47,6 +47,8 @@ def clause_2(trial: Trial) -> None:
         for index in range(count):
             instrument = trial.open()
             call = _methods(instrument)[index]
+            if isinstance(instrument, PhotonCounter) and trial.bench.allow_output:
+                instrument.start_count(instrument.gate.low)  # or it has no count to ask for
             sent, trial.proxy.mode = len(trial.proxy.messages), mode
             error, took_s = timed(call)
             name = f"{name_of(call)} of an instrument in the state {mode!r}"
@@ -67,6 +69,10 @@ def _methods(instrument: Instrument) -> list[Callable[[], object]]:
         *(partial(one.set, one.rest) for one in knob),
         *(one.read for one in switch),
         *(partial(one.set, False) for one in switch),
+        *starts(instrument),
+        *((instrument.read_burst,) if isinstance(instrument, RfSource) else ()),
+        *((instrument.read_count,) if isinstance(instrument, PhotonCounter) else ()),
+        *((instrument.read_value,) if isinstance(instrument, Gauge) else ()),
     ]
 
 
@@ -82,6 +88,9 @@ def clause_3(trial: Trial) -> None:
     trial.proxy.delay_next_reply_s = 2.0 * trial.bench.timeout_s
     require(failure_of(instrument.read_identity) is not None, "a reply twice the timeout late was accepted")
     require(read() == before, "a late reply answered the next query")
+    for one in readings(instrument):
+        error = failure_of(one)
+        require(error is None, f"after a late reply {name_of(one)} gave {error!r}")
 
     _lose(trial, instrument)
     sent, trial.proxy.identity = len(trial.proxy.messages), _STRANGER

@@ -10,7 +10,7 @@ from functools import partial
 from trapd_drivers.conformance.controls import Knob, knobs, switches
 from trapd_drivers.conformance.trial import NotTried, Trial, failure_of, require
 from trapd_drivers.errors import InstrumentRefused, OutOfRange
-from trapd_drivers.interfaces import DcSupply, Instrument
+from trapd_drivers.interfaces import DcSupply, Instrument, Scale
 
 _SETTLES_S = 5.0  # the longest wait for terminals to follow
 _LOOKS_S = 0.01
@@ -43,12 +43,16 @@ def clause_10(trial: Trial) -> None:
     """a value outside the scale raises OutOfRange and sends nothing"""
     instrument = _open(trial)
     for knob in knobs(instrument):
-        beyond = 0.01 * (knob.scale.high - knob.scale.low) + knob.scale.resolution
-        for value in (knob.scale.high + beyond, knob.scale.low - beyond, math.inf, -math.inf, math.nan):
-            _require_refused_unsent(trial, instrument, partial(knob.set, value), f"{knob.name} = {value:g}")
+        for value in outside(knob.scale):
+            require_refused_unsent(trial, instrument, partial(knob.set, value), f"{knob.name} = {value:g}")
 
 
-def _require_refused_unsent(trial: Trial, instrument: Instrument, call: Callable[[], object], what: str) -> None:
+def outside(scale: Scale) -> tuple[float, ...]:
+    beyond = 0.01 * (scale.high - scale.low) + scale.resolution
+    return (scale.high + beyond, scale.low - beyond, math.inf, -math.inf, math.nan)
+
+
+def require_refused_unsent(trial: Trial, instrument: Instrument, call: Callable[[], object], what: str) -> None:
     sent = len(trial.proxy.messages)
     error = failure_of(call)
     require(isinstance(error, OutOfRange), f"{what} gave {error!r}, not OutOfRange")
@@ -116,14 +120,14 @@ def clause_14(trial: Trial) -> None:
         value = knob.small(0.05)
         knob.set(value)
         states[knob.channel].set(True)
-        _require_measured(knob, value, _NEAR * abs(value) + knob.scale.accuracy(value), "on")
+        require_measured(knob, value, _NEAR * abs(value) + knob.scale.accuracy(value), "on")
         states[knob.channel].set(False)
-        _require_measured(knob, 0.0, max(knob.scale.accuracy(0.0), _ABOUT_ZERO * knob.scale.high), "off")
+        require_measured(knob, 0.0, max(knob.scale.accuracy(0.0), _ABOUT_ZERO * knob.scale.high), "off")
     if not tried:
         raise NotTried("the instrument cannot tell what is at its terminals")
 
 
-def _require_measured(knob: Knob, expected: float, tolerance: float, state: str) -> None:
+def require_measured(knob: Knob, expected: float, tolerance: float, state: str) -> None:
     until_s = time.monotonic() + _SETTLES_S
     while True:
         found = knob.measure() if knob.measure is not None else None
@@ -168,7 +172,7 @@ def clause_16(trial: Trial) -> None:
             partial(instrument.read_output, channel),
         )
         for call in calls:
-            _require_refused_unsent(trial, instrument, call, f"channel {channel}")
+            require_refused_unsent(trial, instrument, call, f"channel {channel}")
 
 
 def _open_channels(trial: Trial) -> DcSupply:

@@ -1,1 +1,1 @@
-"""The SCPI family: an RF source and a DC supply that speak SCPI-1999 over IEEE 488.2 in the dialect of a profile."""
+"""The SCPI family: instruments that speak SCPI-1999 over IEEE 488.2 in the dialect of a profile."""

@@ -22,9 +22,22 @@ def number(text: str) -> float:
     if not _NUMBER.fullmatch(text):
         raise Malformed(f"{text[:40]!r} is not a number")
     value = float(text)
-    if abs(value) >= _LARGEST:
+    if is_no_number(text):
         raise Malformed(f"{text!r} is SCPI's way of saying that there is no number")
     return value
+
+
+def is_no_number(text: str) -> bool:
+    """Whether it is how SCPI writes an infinity or not-a-number."""
+    return _NUMBER.fullmatch(text) is not None and abs(float(text)) >= _LARGEST
+
+
+def whole_number(text: str) -> int:
+    """A count or a register: a number that is whole and not negative, in whichever of the three formats."""
+    value = number(text)
+    if value < 0.0 or not value.is_integer():
+        raise Malformed(f"{text[:40]!r} is not a whole number from 0")
+    return int(value)
 
 
 def identity(text: str) -> Identity:

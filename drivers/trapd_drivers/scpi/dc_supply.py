@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
+from trapd_drivers.dialect import Dialect, Key
 from trapd_drivers.errors import OutOfRange
 from trapd_drivers.interfaces import DcSupply, Scale
-from trapd_drivers.profile import Dialect, Key
 from trapd_drivers.scpi.instrument import ScpiInstrument
 from trapd_drivers.scpi.session import Session
 

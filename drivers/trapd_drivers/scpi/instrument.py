@@ -1,13 +1,14 @@
-"""What both SCPI instruments share: opening, status, values within their scale, and output switches."""
+"""What the SCPI instruments share: opening, status, values within their scale, courses, and output switches."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
 from typing import ClassVar, Self
 
+from trapd_drivers.dialect import Course, Dialect, Key
 from trapd_drivers.errors import OutOfRange
 from trapd_drivers.interfaces import Identity, Instrument, Scale, Status
-from trapd_drivers.profile import Dialect, Key, load_profile
+from trapd_drivers.profile import load_profile
 from trapd_drivers.quantity import Quantity
 from trapd_drivers.scpi.session import Session
 
@@ -65,6 +66,12 @@ class ScpiInstrument(Instrument):
         self._session.close()
 
     def _set(self, key: Key, name: str, value: float) -> None:
+        encoded = self._encoded(key, name, value)
+        with self._session.call():
+            self._session.command(self._dialect.quantities[key].set, value=encoded, channel=key[1])
+
+    def _encoded(self, key: Key, name: str, value: float) -> str:
+        """``value`` as it is sent; `OutOfRange` outside the scale."""
         scale, quantity = self._scales[key], self._dialect.quantities[key]
         slack = 1e-6 * scale.resolution  # a limit that went through another unit is still the limit
         if not scale.low - slack <= value <= scale.high + slack:  # nor is not a number inside
@@ -72,8 +79,12 @@ class ScpiInstrument(Instrument):
                 f"{self.resource}: {name} = {value:.10g} is outside {scale.low:.10g} .. {scale.high:.10g}; "
                 "nothing was sent"
             )
-        with self._session.call():
-            self._session.command(quantity.set, value=quantity.encode(value, scale), channel=key[1])
+        return quantity.encode(value, scale)
+
+    def _start(self, course: Course, key: Key, encoded: str) -> None:
+        """Its time, checked, and only then what starts it. Only inside ``with self._session.call():``."""
+        self._session.command(self._dialect.quantities[key].set, value=encoded)
+        self._session.command(course.start)
 
     def _read(self, key: Key) -> float:
         with self._session.call():
@@ -89,15 +100,22 @@ class ScpiInstrument(Instrument):
     def _switch(self, on: bool, channel: int) -> None:
         """Always sent, whatever the state is believed to be; off even to an instrument that has lost its settings."""
         with self._session.call():
-            self._told.pop(channel, None)
-            self._session.command(self._dialect.on if on else self._dialect.off, channel=channel, always=not on)
-            self._told[channel] = on
+            if on and self._dialect.course is not None and self._dialect.course.end is not None:
+                self._session.command(self._dialect.course.end)
+            self._switch_now(on, channel)
+
+    def _switch_now(self, on: bool, channel: int) -> None:
+        assert self._dialect.output is not None, "only an instrument with outputs is told to switch one"
+        self._told.pop(channel, None)
+        form = self._dialect.output.on if on else self._dialect.output.off
+        self._session.command(form, channel=channel, always=not on)
+        self._told[channel] = on
 
     def _is_on(self, channel: int) -> bool:
-        if self._dialect.output is None:
+        if self._dialect.output is None or self._dialect.output.state is None:
             return self._told.get(channel, True)
         with self._session.call():
-            return self._session.read_state(self._dialect.output, channel)
+            return self._session.read_state(self._dialect.output.state, channel)
 
     def _scale(self, channel: int, quantity: Quantity) -> Scale:
         return quantity.scale(

@@ -7,11 +7,12 @@ from contextlib import AbstractContextManager
 from dataclasses import dataclass, field
 from typing import TypeVar
 
+from trapd_drivers.dialect import Question
 from trapd_drivers.errors import InstrumentRefused, Malformed
 from trapd_drivers.form import Form
 from trapd_drivers.interfaces import Identity
 from trapd_drivers.link import Link
-from trapd_drivers.profile import Profile, Question
+from trapd_drivers.profile import Profile
 from trapd_drivers.quantity import Reading
 from trapd_drivers.scpi import answers
 
@@ -39,6 +40,7 @@ class Session:
         self.resource = resource
         self._dialect = profile.status
         self._events = Events()
+        self.power_ons = 0  # that were noticed
         self._opened = False
         self._base_lost = False
         self._link = Link(
@@ -65,8 +67,20 @@ class Session:
         """The SI value that the reading's query tells, or another ``query`` with replies of the same kind."""
         return reading.unit.to_si(self._ask(query or reading.query, reading.reply, channel, answers.number))
 
+    def read_gauge(self, reading: Reading) -> float:
+        """As `read_number`, of an instrument that may answer SCPI's not-a-number: `InstrumentRefused`."""
+        said = self._ask(reading.query, reading.reply, 0, lambda text: text)
+        if answers.is_no_number(said):
+            raise InstrumentRefused(f"{self.resource}: {reading.query.text!r} was answered {said!r}: it cannot tell")
+        return reading.unit.to_si(self._read(reading.query.text, said, answers.number))
+
+    def read_count(self, reading: Reading) -> int:
+        return self._ask(reading.query, reading.reply, 0, answers.whole_number)
+
     def read_state(self, question: Question, channel: int = 0) -> bool:
         def is_yes(text: str) -> bool:
+            if question.bits:
+                return bool(answers.whole_number(text) & question.bits)
             if question.no is not None and text.upper() not in question.yes | question.no:
                 raise Malformed(f"{text[:40]!r} is neither on nor off")
             return text.upper() in question.yes
@@ -121,6 +135,7 @@ class Session:
     def _note_power_on(self) -> None:
         self._events.power_on = True
         self._base_lost = self._opened  # at the first opening nobody has built on anything yet
+        self.power_ons += 1
 
     def _drain(self, query: str) -> list[tuple[int, str]]:
         """The error queue's entries, oldest first, without those the profile ignores; ``query`` begins it."""

@@ -60,6 +60,8 @@ def test_the_line_names_every_port_and_the_process(process: subprocess.Popen[str
         "rf": "rf-source",
         "dc": "dc-supply",
         "tickle": "rf-source",
+        "counter": "photon-counter",
+        "vacuum": "gauge",
     }
     for one in line["instruments"].values():
         with Client(one["port"]) as client:

@@ -16,7 +16,7 @@ import click
 
 from trapd.cli.answer import tell_json, wants_json
 from trapd.cli.demo.bench import Folder
-from trapd.cli.demo.processes import running_daemon, running_rack
+from trapd.cli.demo.processes import ask_bench, running_daemon, running_rack
 from trapd.cli.demo.story import say_how_to_talk, tell_story
 from trapd.cli.options import command
 from trapd.cli.terminal import STRONG, say
@@ -71,15 +71,15 @@ def _run(folder: Folder, until: float | None) -> None:
                 tell_json({"trap_file": str(folder.trap_file), "record": str(folder.record), "rack": rack})
                 sys.stdout.flush()
             else:
-                _tell(folder, ports)
+                _tell(folder, ports, rack["control"])
             _keep_running(daemon, until)
 
 
-def _tell(folder: Folder, ports: Mapping[str, int]) -> None:
+def _tell(folder: Folder, ports: Mapping[str, int], control_port: int) -> None:
     say(("trapd demo: an invented trap, simulated instruments, a real daemon", STRONG))
     say(f"rack: {', '.join(f'{name} on port {port}' for name, port in ports.items())}")
     say(f"trap file: {folder.trap_file}")
-    tell_story()
+    tell_story(lambda do: ask_bench(control_port, do))
     say_how_to_talk(folder, _program())
 
 

@@ -19,7 +19,12 @@ driver = "{driver}"
 resource = "TCPIP::127.0.0.1::{port}::SOCKET"
 """
 
-DRIVERS = {"rf": "scpi-rf-source", "dc": "scpi-dc-supply"}
+DRIVERS = {
+    "rf": "scpi-rf-source",
+    "dc": "scpi-dc-supply",
+    "tickle": "scpi-rf-source",
+    "counter": "scpi-photon-counter",
+}
 
 
 @dataclass(frozen=True)

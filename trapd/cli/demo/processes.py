@@ -5,6 +5,7 @@ from __future__ import annotations
 import ctypes
 import json
 import signal
+import socket
 import subprocess
 import sys
 import time
@@ -31,6 +32,16 @@ def running_rack() -> Iterator[Mapping[str, Any]]:
         if not line:
             raise Unreachable(f"the simulated rack did not start (exit code {process.wait()})")
         yield json.loads(line)
+
+
+def ask_bench(control_port: int, do: str) -> None:
+    """Something that no instrument does, such as loading an ion: a line of JSON to the rack, and its answer."""
+    with socket.create_connection(("127.0.0.1", control_port), timeout=ENDING_S) as line, line.makefile("rwb") as file:
+        file.write(json.dumps({"do": do}).encode() + b"\n")
+        file.flush()
+        answer = json.loads(file.readline())
+    if not answer["ok"]:
+        raise Unreachable(f"the simulated bench: {do}: {answer['error']}")
 
 
 @contextmanager

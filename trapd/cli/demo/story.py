@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import shlex
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
 
 import click
 
@@ -11,52 +12,64 @@ from trapd.cli.demo.bench import Folder
 from trapd.cli.terminal import FAINT, STRONG, say
 from trapd.errors import NotConfirmed, Refused
 
-STORY: tuple[tuple[str, str], ...] = (
-    (
-        "The daemon found everything off and touched nothing. So nothing can be in the trap.",
-        "status",
-    ),
-    (
-        "Switch on: supplies at 0 V, RF at its least level, then a judged ramp to the first point of the file.",
+
+@dataclass(frozen=True)
+class Scene:
+    """A sentence, and the command that shows what it says. ``bench``: what happens at the simulated bench before it."""
+
+    sentence: str
+    command: str
+    bench: str | None = None
+
+
+STORY: tuple[Scene, ...] = (
+    Scene(
+        "The daemon found everything off and touched nothing. So nothing can be in the trap. Switch on: supplies at 0 V, RF "
+        "at its least level, then a judged ramp to the first point of the file.",
         "on --why 'start of the day'",
     ),
-    (
-        "Ions come in. What is in the trap is said by a person, and stands in the record.",
+    Scene(
+        "An ion comes in. What is in the trap is said by a person, and stands in the record.",
         "ions loading 40Ca+ --why 'oven on'",
     ),
-    (
-        "From here on every move is held to what keeps these two.",
-        "ions 40Ca+=2 --why 'two on the camera'",
+    Scene(
+        "From here on every move is held to what keeps this one.",
+        "ions 40Ca+=1 --why 'one on the camera'",
+        bench="load",
     ),
-    (
+    Scene(
         "A setpoint: judged over the whole way, written down, then sent step by step and read back.",
         "set endcaps=200V --why 'stiffer along z'",
     ),
-    (
-        "One that would lose them. A refusal is an answer: the rule, the numbers, the nearest value that is allowed.",
+    Scene(
+        "One that would lose it. A refusal is an answer: the rule, the numbers, the nearest value that is allowed.",
         "set drive.amplitude=100V --why 'less heating'",
     ),
-    (
-        "All of it is in the record, every command on disk before it was sent.",
-        "record --setpoints --limit 4",
+    Scene(
+        "Where does the ion really oscillate? A weak tickle in short bursts, photons counted, in random order, until the "
+        "uncertainty is what the file asks for.",
+        "scan x --why 'first of the day'",
     ),
-    ("What was refused is there as well, and why.", "record --refused --since 1min"),
-    ("And the record can be proved.", "verify"),
+    Scene("Predicted and measured side by side; the schedule goes on measuring.", "status"),
+    Scene(
+        "All of it is in the record, every command on disk before it was sent; and the record can be proved.", "verify"
+    ),
 )
-"""A sentence, and the command that shows what it says."""
 
 
-def tell_story() -> None:
-    """Raises when a command ends other than as told: done, or refused."""
+def tell_story(bench: Callable[[str], None]) -> None:
+    """``bench`` does something at the simulated bench. Raises when a command ends other than as told: done, or refused."""
     from trapd.cli.program import PROGRAM  # which loads this file for its help
 
-    for sentence, command in STORY:
+    for scene in STORY:
         say()
-        say(sentence)
-        say(("$ ", FAINT), (f"trapd {command}", STRONG))
-        code = PROGRAM.main(shlex.split(command), prog_name="trapd", standalone_mode=False)
+        say(scene.sentence)
+        if scene.bench is not None:
+            bench(scene.bench)
+        say(("$ ", FAINT), (f"trapd {scene.command}", STRONG))
+        code = PROGRAM.main(shlex.split(scene.command), prog_name="trapd", standalone_mode=False)
         if code not in (None, 0, Refused.exit_code):
-            raise NotConfirmed(f"the demo ends here: `trapd {command}` left with exit code {code}")
+            raise NotConfirmed(f"the demo ends here: `trapd {scene.command}` left with exit code {code}")
 
 
 def say_how_to_talk(folder: Folder, program: str) -> None:
@@ -68,9 +81,10 @@ def say_how_to_talk(folder: Folder, program: str) -> None:
         ("trapd status", "what it is doing"),
         ('trapd window "$TRAPD_AT" endcaps=200V', "how far each setpoint may go"),
         ("trapd set endcaps=120V --why 'back again'", "a setpoint of yours, good or bad"),
+        ("trapd scan z", "measure the axial frequency now"),
         ("trapd record --setpoints --since 1min", "what was sent and read back"),
         (
-            f"sqlite3 {shlex.quote(str(folder.record))} 'SELECT * FROM refusals'",
+            f"sqlite3 {shlex.quote(str(folder.record))} 'SELECT * FROM frequencies'",
             "the record is one SQLite file, readable while the daemon writes",
         ),
         ("trapd off", "always there"),
