@@ -104,4 +104,108 @@ MUTATIONS = (
 """,
         caught_by=("tests/controller/test_path_of_a_setpoint.py",),
     ),
+    Mutation(
+        name="a burst is started before its intent is committed",
+        file="trapd/controller/tickling.py",
+        old="""    course.intent = yield from commit_next(desk, course.origin, course.take_happened(), draft)
+    job = _burst(intent, plan, scales[TICKLE_FREQUENCY], scales[TICKLE_LEVEL], desk.clock)
+    course.burst_ns = desk.clock.monotonic_ns()
+    course.job = desk.submit(course.tickle, job)
+""",
+        new="""    job = _burst(intent, plan, scales[TICKLE_FREQUENCY], scales[TICKLE_LEVEL], desk.clock)
+    course.burst_ns = desk.clock.monotonic_ns()
+    course.job = desk.submit(course.tickle, job)
+    course.intent = yield from commit_next(desk, course.origin, course.take_happened(), draft)
+""",
+        caught_by=(
+            "tests/controller/test_scans.py::test_every_burst_had_its_intent_on_disk_when_the_rack_received_it",
+        ),
+    ),
+    Mutation(
+        name="counts under the floor do not keep a scan from beginning",
+        file="trapd/controller/aiming.py",
+        old="if rate_of(shots) < plan.floor_per_s:",
+        new="if rate_of(shots) < 0:",
+        caught_by=("tests/controller/test_scans.py::test_without_photons_nothing_is_tickled",),
+    ),
+    Mutation(
+        name="vanished counts are fitted through",
+        file="trapd/scans/estimate.py",
+        old="    if lost is not None:\n",
+        new="    if lost is not None and not points.counts.any():\n",
+        caught_by=("tests/scans/test_estimate.py",),
+    ),
+    Mutation(
+        name="the hypothesis that nothing is there is dropped",
+        file="trapd/scans/estimate.py",
+        old="    if ratio < evidence.threshold:\n",
+        new="    if ratio < 0:\n",
+        caught_by=("tests/scans/test_estimate.py",),
+    ),
+    Mutation(
+        name="a scan stops on one lucky pass",
+        file="trapd/scans/estimate.py",
+        old="if passes < 2 or",
+        new="if passes < 1 or",
+        caught_by=("tests/scans/test_estimate.py",),
+    ),
+    Mutation(
+        name="anybody ends another person's scan",
+        file="trapd/controller/precedence.py",
+        old="running.due is not None or request.interrupt or running.author == request.author",
+        new="True",
+        caught_by=("tests/controller/test_scans.py::test_another_persons_scan_goes_on_unless_interrupt_is_said",),
+    ),
+    Mutation(
+        name="a claim is ignored",
+        file="trapd/controller/precedence.py",
+        old="if claim is None or request.interrupt or",
+        new="if claim is None or claim is not None or",
+        caught_by=("tests/controller/test_claims.py",),
+    ),
+    Mutation(
+        name="a start forgets the tickle",
+        file="trapd/controller/adoption.py",
+        old="""        yield from silencing(desk, DAEMON, "after a start")\n""",
+        new="",
+        caught_by=("tests/controller/test_scans.py::test_a_start_tells_the_tickle_off_and_nothing_else_anything",),
+    ),
+    Mutation(
+        name="what has an entry already is written again",
+        file="trapd/schedule/schedule.py",
+        old="""those that are not there yet. Raises `RecordFailed`.\"\"\"
+        self._read_newest(row)
+""",
+        new="""those that are not there yet. Raises `RecordFailed`.\"\"\"
+""",
+        caught_by=("tests/schedule/test_hindered.py",),
+    ),
+    Mutation(
+        name="what has an entry already is run again",
+        file="trapd/schedule/schedule.py",
+        old="        self._read_newest(row)  # a commit that failed may have come to stand all the same\n",
+        new="",
+        caught_by=("tests/schedule/test_clock_steps.py::test_each_due_time_has_exactly_one_entry",),
+    ),
+    Mutation(
+        name="after a step back due times are due again",
+        file="trapd/schedule/schedule.py",
+        old="return max(self.newest_us, self.since_us)",
+        new="return min(self.newest_us, self.since_us) or self.since_us",
+        caught_by=("tests/schedule/test_clock_steps.py",),
+    ),
+    Mutation(
+        name="the alarm sleeps on when the clock is set back",
+        file="trapd/schedule/schedule.py",
+        old="        self._alarm.set()\n",
+        new="",
+        caught_by=("tests/schedule/test_alarm.py",),
+    ),
+    Mutation(
+        name="a paused schedule goes on",
+        file="trapd/schedule/due_times.py",
+        old="if pause is not None and now_us < pause.until_us:",
+        new="if pause is not None and now_us > pause.until_us:",
+        caught_by=("tests/schedule/test_hindered.py",),
+    ),
 )

@@ -13,9 +13,11 @@ import pytest
 from scipy.stats import chi2
 
 from trapd.figures import MOST_MARKERS, poisson_interval, scan_figure, sums
+from trapd.scans.flags import FLAGS
 
 PLAN = {"low_hz": 2_100_000.0, "high_hz": 2_200_000.0, "predicted_hz": 2_150_000.0, "predicted_uncertainty_hz": 1e4}
 FOUND = {
+    "state": "found",
     "scan": "x",
     "mode": "x",
     "species": "40Ca+",
@@ -25,12 +27,13 @@ FOUND = {
     "flags": ["deep", "broadened"],
     "frequency_hz": 2_155_021.0,
     "uncertainty_hz": 48.0,
+    "predicted_hz": 2_150_000.0,
     "difference_sigma": 0.502,
     "width_hz": 2000.0,
     "contrast": 0.3,
     "rate_per_s": 10_000.0,
 }
-NONE = {**FOUND, "message": "No resonance.", "flags": [], "difference_sigma": None}
+NONE = {**FOUND, "state": "none", "message": "No resonance.", "flags": [], "difference_sigma": None}
 NONE |= dict.fromkeys(("frequency_hz", "uncertainty_hz", "width_hz", "contrast"))
 
 
@@ -50,8 +53,10 @@ def words(svg: str) -> list[str]:
 def test_trap_scan_time_entry_result_and_units_stand_in_it_as_text() -> None:
     found = words(scan_figure(points(), FOUND, PLAN, trap="north $bench$"))
     assert "north $bench$, scan x (x of 40Ca+), 2026-03-01 12:00:00 UTC, entry 88" in found
-    assert "Resonance at 2155021 Hz, standard uncertainty 48 Hz. +0.5 σ from the prediction." in found
-    assert "deep, broadened" in found
+    assert "Resonance at 2155021 Hz, standard uncertainty 48 Hz. +5021 Hz, +0.5 σ from the prediction." in found
+    for flag in FOUND["flags"]:
+        assert f"{flag}: {FLAGS[flag]}" in " ".join(found)
+    assert max(map(len, found)) < 100
     assert {"frequency of the tickle (MHz)", "count rate (1/s)", "2.10", "2.20"} <= set(found)
     assert {"counted, ±1 σ (Poisson)", "fitted line", "measured, ±1 σ", "tickle off, ±1 σ"} <= set(found)
 
@@ -61,6 +66,26 @@ def test_without_a_resonance_there_is_no_line_and_no_measured_frequency() -> Non
     assert "No resonance." in found
     assert "predicted, ±1 σ hatched" in found
     assert not {"fitted line", "measured, ±1 σ"} & set(found)
+
+
+def test_a_scan_that_vanished_shows_no_number_whatever_it_had_seen() -> None:
+    lost = {**FOUND, "state": "vanished", "message": "The counts vanished.", "flags": ["counts_vanished"]}
+    found = words(scan_figure(points(), lost, PLAN, trap="north bench"))
+    assert "The counts vanished." in found
+    assert not {"fitted line", "measured, ±1 σ"} & set(found)
+    assert not [one for one in found if "prediction" in one]
+
+
+def test_a_point_without_a_count_has_an_error_bar_and_the_measured_band_is_filled() -> None:
+    """A bar is an upright stretch of its own path; that of no counts ends above the axis it begins on. The band: a shape
+    with a fill and an edge of some width, as 48 Hz of 100 kHz would not be seen."""
+    empty = [{"frequency_hz": 2_120_000.0, "counts": 0, "dwell_s": 0.02}, points()[5]]
+    svg = scan_figure(empty, FOUND, PLAN, trap="north bench")
+    bars = ElementTree.fromstring(svg).findall(".//*[@id='LineCollection_1']/{*}path")
+    ends = [[float(y) for y in re.findall(r"[ML] [0-9.]+ ([0-9.]+)", bar.attrib["d"])] for bar in bars]
+    assert len(ends) == 2
+    assert all(len(set(end)) == 2 for end in ends)
+    assert re.search(r"fill: #87cefa; stroke: #87cefa; stroke-width: 3", svg)
 
 
 def test_a_scan_that_counted_nothing_can_be_drawn() -> None:

@@ -88,6 +88,8 @@ class Daemon:
             stack.callback(worker.close, CLOSING_S)
         judges = ThreadPoolExecutor(1, thread_name_prefix="judge")
         others = ThreadPoolExecutor(1, thread_name_prefix="dry judge")
+        estimates = ThreadPoolExecutor(1, thread_name_prefix="estimate")
+        stack.callback(estimates.shutdown, wait=False, cancel_futures=True)
         stack.callback(judges.shutdown, wait=False, cancel_futures=True)
         stack.callback(others.shutdown, wait=False, cancel_futures=True)
 
@@ -99,6 +101,7 @@ class Daemon:
             record=record,
             clock=self.clock,
             judges=judges,
+            estimates=estimates,
             situation=Situation(values={}, outputs={}, contents=Contents(presence="unknown")),
         )
         self.controller = Controller(desk)

@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 import io
+import textwrap
 from collections.abc import Mapping, Sequence
 from datetime import UTC, datetime, timedelta
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
+
+from trapd.scans.flags import FLAGS
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -20,6 +23,7 @@ MOST_MARKERS = 150
 """More points than that are drawn as sums of neighbours."""
 
 _MHZ = 1e6
+_TITLE_COLUMNS = 95
 _ONE_SIGMA = 0.158655
 """The tail beyond one standard deviation of a normal distribution."""
 
@@ -51,7 +55,7 @@ def scan_figure(points: Sequence[Data], finding: Data, plan: Data, *, trap: str)
         _draw_line(axes, finding, plan)
         axes.set(xlabel="frequency of the tickle (MHz)", ylabel="count rate (1/s)")
         axes.set_xlim(plan["low_hz"] / _MHZ, plan["high_hz"] / _MHZ)
-        axes.set_title(_title(finding, trap), fontsize=10.0, loc="left")
+        axes.set_title(_title(finding, trap), fontsize=9.0, loc="left")
         figure.legend(loc="outside lower center", ncols=3, frameon=False, fontsize=9.0)
         svg = io.StringIO()
         figure.savefig(svg, format="svg", facecolor="white", metadata={"Date": None, "Creator": "trapd"})
@@ -111,18 +115,18 @@ def _draw_frequencies(axes: Axes, finding: Data, plan: Data) -> None:
     ends = (predicted_hz - spread_hz) / _MHZ, (predicted_hz + spread_hz) / _MHZ
     axes.axvspan(*ends, facecolor="none", edgecolor="0.87", hatch="//", lw=0.0, zorder=0)
     axes.axvline(predicted_hz / _MHZ, color="0.35", lw=1.2, ls="--", zorder=4, label="predicted, ±1 σ hatched")
-    if finding["frequency_hz"] is None:
+    if not _has_number(finding):
         return
     found_hz, sigma_hz = finding["frequency_hz"], finding["uncertainty_hz"]
-    axes.axvspan(
-        (found_hz - sigma_hz) / _MHZ, (found_hz + sigma_hz) / _MHZ, color="tab:blue", alpha=0.35, lw=0, zorder=2
-    )
-    axes.axvline(found_hz / _MHZ, color="tab:blue", lw=1.2, zorder=3, label="measured, ±1 σ")
+    ends = (found_hz - sigma_hz) / _MHZ, (found_hz + sigma_hz) / _MHZ
+    # Its edge has a width on paper: a band that is narrower than a line would not be seen.
+    axes.axvspan(*ends, facecolor="lightskyblue", edgecolor="lightskyblue", lw=3.0, zorder=2, label="measured, ±1 σ")
+    axes.axvline(found_hz / _MHZ, color="tab:blue", lw=0.8, zorder=3)
 
 
 def _draw_line(axes: Axes, finding: Data, plan: Data) -> None:
     """As `trapd.scans.line` has it."""
-    if finding["frequency_hz"] is None:
+    if not _has_number(finding):
         return
     frequency_hz = np.linspace(plan["low_hz"], plan["high_hz"], 1001)
     profile = 1 / (1 + (2 * (frequency_hz - finding["frequency_hz"]) / finding["width_hz"]) ** 2)
@@ -134,8 +138,14 @@ def _title(finding: Data, trap: str) -> str:
     moment = datetime(1970, 1, 1, tzinfo=UTC) + timedelta(microseconds=finding["at_us"])
     what = f"scan {finding['scan']} ({finding['mode']} of {finding['species']})"
     lines = [f"{trap}, {what}, {moment:%Y-%m-%d %H:%M:%S} UTC, entry {finding['request']}"]
-    apart = finding.get("difference_sigma")
-    lines.append(finding["message"] + ("" if apart is None else f" {apart:+.1f} σ from the prediction."))
-    if finding["flags"]:
-        lines.append(", ".join(finding["flags"]))
+    said, apart = finding["message"], finding.get("difference_sigma")
+    if apart is not None and _has_number(finding):
+        said += f" {finding['frequency_hz'] - finding['predicted_hz']:+.0f} Hz, {apart:+.1f} σ from the prediction."
+    for words in (said, *(f"{flag}: {FLAGS.get(flag, '')}" for flag in finding["flags"])):
+        lines += textwrap.wrap(words, _TITLE_COLUMNS)
     return "\n".join(lines)
+
+
+def _has_number(finding: Data) -> bool:
+    """Of a scan that lost its counts none is shown, whatever was seen before."""
+    return finding["frequency_hz"] is not None and finding["state"] != "vanished"

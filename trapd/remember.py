@@ -7,7 +7,7 @@ from trapd.record import Entry, Reader
 from trapd.setpoint import AMPLITUDE, TICKLE, TICKLE_OUTPUT, Contents
 from trapd.wiring import DRIVE_OUTPUT
 
-_MANY = 200
+_MANY = 10_000
 _MEASURED = (
     "scan",
     "species",
@@ -55,7 +55,7 @@ def _contents(entry: Entry) -> Contents:
 
 
 def _previous(reader: Reader) -> dict[str, float] | None:
-    for result in reversed(reader.entries(kind="result", newest=True, limit=100)):
+    for result in reversed(reader.entries(kind="result", newest=True, limit=_MANY)):
         if result.data["state"] == "done" and result.data["from"] != result.data["to"]:
             return dict(result.data["from"]) if result.data["returns"] else None
     return None

@@ -113,14 +113,22 @@ class Wiring:
     def setpoints(self) -> tuple[str, ...]:
         return (FREQUENCY, AMPLITUDE, *self.electrodes)
 
+    def tickle_level_v(self, wanted_v: float) -> float:
+        """The strongest tickle that can be programmed and is no stronger than ``wanted_v``; 0 when there is none."""
+        scale, lower_v = self.scales[TICKLE_LEVEL], wanted_v
+        while (level_v := scale.quantise(lower_v)) > wanted_v * (1 + 1e-9):
+            lower_v *= 0.98  # steps may be even in volts or in dB
+        return level_v
+
+    @property
+    def holding(self) -> tuple[str, ...]:
+        """The instruments that hold the ions, the drive first."""
+        return tuple(dict.fromkeys((self.drive, *(owner for owner, _ in self.electrodes.values()))))
+
     @property
     def with_outputs(self) -> tuple[str, ...]:
         """The instruments that `off` switches off, the drive first."""
-        return tuple(dict.fromkeys((self.drive, *(owner for owner, _ in self.electrodes.values()), *self._tickles)))
-
-    @property
-    def _tickles(self) -> tuple[str, ...]:
-        return () if self.tickle is None else (self.tickle,)
+        return self.holding if self.tickle is None else (*self.holding, self.tickle)
 
     def instrument_of(self, setpoint: str) -> str:
         """The instrument behind a setpoint or an output."""

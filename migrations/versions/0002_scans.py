@@ -118,23 +118,75 @@ def time_text(column: str) -> str:
     return f"{seconds} || printf('.%06dZ', {column} % 1000000)"
 
 
+# Every scan that began, whatever became of it. Grouped, because a join of what says so request by request has no index.
 SCANS = f"""
 CREATE VIEW scans AS
-SELECT seq AS seq, {time_text("time_us")} AS time,
-    json_extract(body, '$.data.request') AS request, json_extract(body, '$.data.scan') AS scan,
-    json_extract(body, '$.data.mode') AS mode, json_extract(body, '$.data.species') AS species,
-    json_extract(body, '$.data.state') AS state,
-    json_extract(body, '$.data.frequency_hz') AS frequency_hz,
-    json_extract(body, '$.data.uncertainty_hz') AS uncertainty_hz,
-    json_extract(body, '$.data.predicted_hz') AS predicted_hz,
-    json_extract(body, '$.data.min_contrast') AS min_contrast,
-    json_extract(body, '$.data.message') AS message,
-    coalesce((SELECT group_concat(value, ' ') FROM json_each(body, '$.data.flags')), '') AS flags,
-    coalesce(json_extract(body, '$.data.who'), actor) AS who,
-    coalesce(json_extract(body, '$.data.why'), '') AS why,
-    time_us AS time_us
-FROM entries
-WHERE kind = 'finding'
+WITH told AS (
+    SELECT json_extract(body, '$.data.request') AS request, max(seq) FILTER (WHERE kind = 'plan') AS plan,
+        max(seq) FILTER (WHERE kind = 'finding') AS finding, max(seq) FILTER (WHERE kind = 'result') AS result
+    FROM entries WHERE kind IN ('plan', 'finding', 'result')
+    GROUP BY 1
+)
+SELECT r.seq AS seq, {time_text("r.time_us")} AS time, json_extract(p.body, '$.data.scan') AS scan,
+    json_extract(p.body, '$.data.mode') AS mode, json_extract(p.body, '$.data.species') AS species,
+    coalesce(json_extract(f.body, '$.data.state'), json_extract(e.body, '$.data.state'), 'unknown') AS state,
+    json_extract(f.body, '$.data.frequency_hz') AS frequency_hz,
+    json_extract(f.body, '$.data.uncertainty_hz') AS uncertainty_hz,
+    json_extract(p.body, '$.data.predicted_hz') AS predicted_hz,
+    json_extract(p.body, '$.data.min_contrast') AS min_contrast,
+    coalesce(json_extract(f.body, '$.data.message'), json_extract(e.body, '$.data.error')) AS message,
+    coalesce((SELECT group_concat(value, ' ') FROM json_each(f.body, '$.data.flags')), '') AS flags,
+    r.actor AS who, coalesce(json_extract(r.body, '$.data.why'), '') AS why,
+    f.seq AS finding, r.time_us AS time_us
+FROM told
+JOIN entries AS r ON r.seq = told.request
+JOIN entries AS p ON p.seq = told.plan
+LEFT JOIN entries AS f ON f.seq = told.finding
+LEFT JOIN entries AS e ON e.seq = told.result
+"""
+
+# Besides the guard's: what was refused before it came as far as a verdict.
+REFUSALS = f"""
+CREATE VIEW refusals AS
+WITH alone AS (
+    SELECT max(seq) AS seq FROM entries WHERE kind IN ('verdict', 'result')
+    GROUP BY json_extract(body, '$.data.request') HAVING sum(kind = 'verdict') = 0
+), x AS (
+    SELECT v.seq AS seq, reason.value AS reason
+    FROM entries AS v JOIN json_each(v.body, '$.data.reasons') AS reason
+    WHERE v.kind = 'verdict' AND json_extract(v.body, '$.data.accepted') = 0
+    UNION ALL
+    SELECT e.seq, json_object('rule', 'conflict', 'message', json_extract(e.body, '$.data.error'))
+    FROM alone JOIN entries AS e ON e.seq = alone.seq
+    WHERE json_extract(e.body, '$.data.code') = 'conflict' AND json_extract(e.body, '$.data.state') = 'failed'
+)
+SELECT said.seq AS seq, {time_text("said.time_us")} AS time,
+    coalesce(r.actor, said.actor) AS who, coalesce(json_extract(r.body, '$.data.why'), '') AS why,
+    json_extract(x.reason, '$.rule') AS rule, json_extract(x.reason, '$.quantity') AS quantity,
+    json_extract(x.reason, '$.unit') AS unit, json_extract(x.reason, '$.found') AS found,
+    json_extract(x.reason, '$.bound') AS bound, json_extract(x.reason, '$.nearest') AS nearest,
+    json_extract(x.reason, '$.species') AS species, json_extract(x.reason, '$.mode') AS mode,
+    json_extract(x.reason, '$.message') AS message,
+    r.seq AS request, said.time_us AS time_us
+FROM x
+JOIN entries AS said ON said.seq = x.seq
+LEFT JOIN entries AS r ON r.seq = json_extract(said.body, '$.data.request') AND r.kind = 'request'
+"""
+
+# The scan's name, beside the point's.
+REQUESTS = f"""
+CREATE VIEW requests AS
+WITH v AS MATERIALIZED (
+    SELECT seq, json_extract(body, '$.data.request') AS request, json_extract(body, '$.data.accepted') AS accepted
+    FROM entries WHERE kind = 'verdict'
+)
+SELECT r.seq AS seq, {time_text("r.time_us")} AS time, r.actor AS who,
+    json_extract(r.body, '$.data.kind') AS kind, json_extract(r.body, '$.data.point') AS point,
+    json_extract(r.body, '$.data.scan') AS scan, json_extract(r.body, '$.data.values') AS "values",
+    json_extract(r.body, '$.data.why') AS why, v.seq AS verdict, v.accepted AS accepted, r.time_us AS time_us
+FROM entries AS r
+LEFT JOIN v ON v.request = r.seq
+WHERE r.kind = 'request'
 """
 
 # sqrt() is there in SQLite from 3.35 on where it is built with its mathematical functions, as distributions do.
@@ -170,5 +222,6 @@ def upgrade() -> None:
     ]
     in_order = (SCAN_POINTS_IN_ORDER, SECULAR_FREQUENCIES_IN_ORDER, DUE_RUNS_IN_ORDER)
     tables = (SCAN_POINTS, SECULAR_FREQUENCIES, DUE_RUNS, *INDICES, *append_only, *in_order)
-    for statement in (*tables, SCANS, FREQUENCIES, DUE_TIMES):
+    again = ("DROP VIEW refusals", "DROP VIEW requests", REFUSALS, REQUESTS)
+    for statement in (*tables, *again, SCANS, FREQUENCIES, DUE_TIMES):
         op.get_bind().exec_driver_sql(statement)  # not op.execute, as in 0001

@@ -16,7 +16,8 @@ from tests.controller.test_faults import DeadDisk
 from tests.resonance import DIP_HZ, SCANNED, WIDTH_HZ, darken, resonant_trap
 from tests.running import RunningTrap
 from trapd.client import Client, JsonEntry
-from trapd.errors import BadRequest, Conflict, NotFound, RecordUnwritable, Superseded
+from trapd.client.following import wait_result
+from trapd.errors import BadRequest, Conflict, DaemonUnreachable, NotFound, RecordUnwritable, Superseded
 
 ENDLESS = SCANNED.replace('target = "100 Hz"', 'target = "1 mHz"')
 """Its scan goes on through all its passes."""
@@ -101,6 +102,18 @@ def test_the_scans_of_the_file_are_listed_each_with_its_newest_finding(scanned: 
     assert listed["target_hz"] == 100.0
 
 
+def test_the_scans_made_are_listed_with_how_they_ended(scanned: RunningTrap) -> None:
+    client, begin = scanned.client, datetime.now(UTC)
+    finding = client.scan("x", why="to be listed")
+    (row,) = client.scans_made(limit=1)
+    assert (row["seq"], row["finding"], row["state"]) == (finding["request"], finding["seq"], "found")
+    assert (row["frequency_hz"], row["why"], row["scan"]) == (finding["frequency_hz"], "to be listed", "x")
+    assert client.scans_made(since=begin) == client.scans_made(after=row["seq"] - 1) == [row]
+    assert client.scans_made(after=row["seq"]) == client.scans_made(scan="y") == client.scans_made(state="none") == []
+    assert client.scans_made(who="nobody") == []
+    assert row not in client.scans_made(until=begin)
+
+
 def test_measured_frequencies_can_be_asked_for(scanned: RunningTrap) -> None:
     client, begin, finding = scanned.client, datetime.now(UTC), scanned.client.scan("x", why="to be found again")
     (row,) = client.frequencies(scan="x", species="40Ca+", mode="x", limit=1)
@@ -167,6 +180,18 @@ def test_a_scan_over_which_the_disk_dies_is_not_waited_for_forever(endless: Runn
     disk.dead = False
 
 
+def test_a_daemon_that_goes_away_over_a_scan_is_not_said_to_have_sent_nothing() -> None:
+    def lost() -> Iterator[JsonEntry]:
+        yield {"seq": 8, "kind": "scan_point", "data": {}}
+        raise DaemonUnreachable("no daemon answers at trapd.sock (refused); nothing was sent")
+
+    with pytest.raises(
+        DaemonUnreachable, match=r"while request 7 was under way; every output.*\(no daemon answers"
+    ) as caught:
+        wait_result(lost(), 7, None, dict)
+    assert "nothing was sent" not in str(caught.value)
+
+
 def test_a_scan_that_the_file_does_not_name_is_a_404_with_those_it_does(scanned: RunningTrap) -> None:
     with pytest.raises(NotFound, match="there are: x"):
         scanned.client.scan("y")
@@ -211,7 +236,7 @@ def test_a_trap_without_scans_says_so(trap: RunningTrap) -> None:
     assert trap.client.scans() == []
     assert trap.client.status()["frequencies"] == []
     assert trap.client.due() == {"due": [], "upcoming": []}
-    with pytest.raises(NotFound, match=r"it has no \[scans\]"):
+    with pytest.raises(NotFound, match="there is none"):
         trap.client.scan("x")
 
 
@@ -260,7 +285,15 @@ def test_to_interrupt_is_said_with_a_boolean(
 
 @pytest.mark.parametrize(
     "question",
-    ["frequencies?mode=w", "frequencies?unknown=1", "frequencies?since=noon", "due?state=done", "due?limit=0"],
+    [
+        "scans?limit=0",
+        "scans?newest=1",
+        "frequencies?mode=w",
+        "frequencies?unknown=1",
+        "frequencies?since=noon",
+        "due?state=done",
+        "due?limit=0",
+    ],
 )
 def test_a_question_about_scans_that_makes_no_sense_is_a_422(local: httpx2.Client, question: str) -> None:
     assert_shape(local.get(f"/v1/{question}"), 422, "bad_request")

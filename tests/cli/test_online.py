@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import signal
+import sys
 import threading
 import time
 from collections.abc import Iterator
@@ -13,6 +14,7 @@ from unittest.mock import Mock
 import pytest
 
 from tests import traps
+from tests.cli.test_program import in_a_terminal
 from tests.cli.typed import Ended
 from tests.cli.typed import trapd as typed
 from tests.running import RunningTrap, hurried, running_trap
@@ -169,6 +171,13 @@ def test_a_mistake_is_a_sentence_and_sends_nothing(holding: RunningTrap, line: s
     assert said in ended.err
     assert ended.out == ""
     assert all("?" in one.text for one in holding.rack.received_after(before))
+
+
+@pytest.mark.parametrize("line", ["status", "set drive.amplitude=250V --why x", "record --limit 20"])
+def test_in_a_narrow_terminal_nothing_is_cut_off(holding: RunningTrap, line: str) -> None:
+    shown = in_a_terminal([sys.executable, "-m", "trapd.cli", *line.split()], 60, TRAPD_AT=str(holding.path))
+    assert "drive.amplitude" in shown
+    assert "…" not in shown
 
 
 def test_status_begins_with_a_sentence(holding: RunningTrap) -> None:

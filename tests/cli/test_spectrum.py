@@ -18,6 +18,7 @@ PLAN = {
     "predicted_uncertainty_hz": 4_000.0,
     "level_v": 0.5e-3,
     "dwell_s": 0.02,
+    "points": 64,
     "passes": 12,
 }
 """64 columns of 1 kHz; the prediction stands in column 20, from 16 to 24."""
@@ -54,7 +55,7 @@ def test_rates_stand_at_the_plot_and_frequencies_beneath() -> None:
 
 
 def test_the_prediction_and_the_estimate_are_letters_with_their_uncertainty() -> None:
-    estimate = {"frequency_hz": 2_121_200.0, "uncertainty_hz": 100.0}
+    estimate = {"state": "found", "frequency_hz": 2_121_200.0, "uncertainty_hz": 100.0}
     *_, predicted, estimated = spectrum(dipped(), PLAN, estimate)
     assert predicted == " predicted  " + " " * 16 + "├───P───┤"
     assert estimated == " estimated  " + " " * 21 + "E"
@@ -66,7 +67,7 @@ def test_an_uncertainty_wider_than_the_window_has_no_ends_in_it() -> None:
 
 
 def test_what_lies_outside_the_window_is_said() -> None:
-    estimate = {"frequency_hz": 2_200_000.0, "uncertainty_hz": 100.0}
+    estimate = {"state": "found", "frequency_hz": 2_200_000.0, "uncertainty_hz": 100.0}
     assert spectrum([], PLAN, estimate)[-1].endswith("E is outside, at 2.2 MHz")
 
 
@@ -89,10 +90,10 @@ def feed(picture: Picture, *entries: tuple[str, dict[str, Any]]) -> None:
 def test_a_picture_fits_a_terminal_of_80_columns() -> None:
     picture = Picture(PLAN)
     feed(picture, *(("scan_point", one) for one in dipped()), ("scan_point", point(None, 210)))
-    feed(picture, ("estimate", {"frequency_hz": 2_121_021.0, "uncertainty_hz": 48.0, "message": ""}))
+    feed(picture, ("estimate", {"state": "found", "frequency_hz": 2_121_021.0, "uncertainty_hz": 48.0, "message": ""}))
     lines = picture.lines(COLUMNS)
     assert max(map(len, lines)) <= 80
-    assert lines[-2] == "pass 1 of 12, 65 counts; tickle off 10 500 /s"
+    assert lines[-2] == "pass 1 of 12, 65 points; tickle off 10 500 /s"
     assert lines[-1] == "f = 2.121021 MHz ± 48 Hz, +521 Hz from the prediction"
 
 
@@ -102,3 +103,21 @@ def test_each_pass_is_a_line() -> None:
     feed(picture, ("scan_point", point(2_110_000.0, 5, pass_number=2)), ("intent", {"request": 1}))
     feed(picture, ("estimate", {"frequency_hz": None, "uncertainty_hz": None, "message": "No resonance seen."}))
     assert picture.line() == "pass 2 of 12: No resonance seen."
+
+
+def test_counts_that_vanished_leave_no_number() -> None:
+    picture = Picture(PLAN)
+    seen = {"frequency_hz": 2_121_021.0, "uncertainty_hz": 48.0, "message": "The counts vanished."}
+    feed(picture, *(("scan_point", one) for one in dipped()), ("finding", {"state": "vanished", **seen}))
+    assert picture.line() == "pass 1 of 12: The counts vanished."
+    assert picture.lines(COLUMNS)[-3] == " estimated  -"
+
+
+def test_half_a_pass_is_no_pass() -> None:
+    picture = Picture(PLAN)
+    feed(picture, *(("scan_point", one) for one in dipped()[:-1]), ("scan_point", point(None, 210)))
+    assert not picture.passed
+    feed(picture, ("scan_point", dipped()[-1]))
+    assert picture.passed
+    feed(picture, ("scan_point", point(2_110_000.0, 5, pass_number=2)))
+    assert not picture.passed

@@ -12,7 +12,8 @@ from hypothesis import strategies as st
 
 from trapd.cli.amounts import amount, assignment, duration, ends_of, hertz, rate, with_uncertainty
 from trapd.cli.entries import sentence
-from trapd.cli.status import state_sentence
+from trapd.cli.finding import finding_words
+from trapd.cli.status import plan_lines, state_sentence
 from trapd.cli.words import read_contents, read_moment, read_until, utc
 from trapd.config.quantity import parse_assignments
 from trapd.errors import BadRequest
@@ -234,6 +235,84 @@ def situation(**changes: Any) -> dict[str, Any]:
 )
 def test_the_state_is_one_sentence(changes: dict[str, Any], words: str) -> None:
     assert state_sentence(situation(**changes)) == words
+
+
+def test_a_tickle_that_does_not_confirm_does_not_hide_what_is_held() -> None:
+    """Nobody asked for off: RF is on still. Off would have it off, or among those that do not confirm."""
+    pending = {"off_pending": ["awg"]}
+    words = "Holding 2 40Ca+; the tickle (awg) is not confirmed off."
+    assert state_sentence(situation(**pending), "awg") == words
+    asked = "Off was asked for and is not confirmed by "
+    assert state_sentence(situation(**pending), "other") == f"{asked}awg."
+    assert state_sentence(situation(off_pending=["rf", "awg"]), "awg") == f"{asked}rf, awg."
+    assert state_sentence(situation(outputs={"drive.output": False}, **pending), "awg") == f"{asked}awg."
+
+
+NOON_US = 1_772_366_400_000_000
+
+
+def told(**changes: Any) -> list[str]:
+    claim = {"who": "ada", "why": "aligning", "until_us": NOON_US + 10}
+    pause = {"who": "ben", "why": "visitors", "until_us": NOON_US + 60_000_000}
+    upcoming = [{"schedule": "x", "due_us": NOON_US + 30_000_000}, {"schedule": "y", "due_us": NOON_US + 60_000_000}]
+    lines = plan_lines({"claim": claim, "pause": pause} | changes, upcoming, NOON_US)
+    return ["".join(part if isinstance(part, str) else part[0] for part in line) for line in lines]
+
+
+def test_a_claim_and_a_pause_are_shown_until_they_end_and_what_is_due_meanwhile_is_marked() -> None:
+    assert told() == [
+        "claimed  by ada until 2026-03-01 12:00:00 UTC: aligning",
+        "paused  the schedule, by ben until 2026-03-01 12:01:00 UTC: visitors",
+        "next due: x 2026-03-01 12:00:30 UTC (paused), y 2026-03-01 12:01:00 UTC",
+    ]
+    over = {"who": "ada", "why": "aligning", "until_us": NOON_US}
+    assert told(claim=over, pause=over) == ["next due: x 2026-03-01 12:00:30 UTC, y 2026-03-01 12:01:00 UTC"]
+    assert told(claim={**over, "until_us": None}, pause=None)[0] == "claimed  by ada: aligning"
+
+
+def test_a_finding_without_a_number_is_a_message_to_which_something_can_be_added() -> None:
+    vanished = {"state": "vanished", "message": "The counts vanished.", "frequency_hz": 2e6, "uncertainty_hz": 48.0}
+    assert finding_words(vanished) == "The counts vanished"
+
+
+FOUND = {"differences": [], "unreachable": {}, "open_intents": [], "open_scan": None, "tickling": False}
+
+
+@pytest.mark.parametrize(
+    ("kind", "data", "words"),
+    [
+        (
+            "alarm",
+            {"condition": "counts vanished", "request": 7, "message": "The ion may be lost."},
+            "counts vanished: The ion may be lost. (request 7)",
+        ),
+        ("found", {"unreachable": {"dc": "no answer in 1 s"}}, "dc does not answer: no answer in 1 s"),
+        ("found", {"unreachable": {}}, "every instrument answers"),
+        ("found", {"differences": ["endcaps is 5 V"], "values": {}, "programmed": {}}, "endcaps is 5 V"),
+        (
+            "found",
+            {**FOUND, "open_intents": [8, 9], "open_scan": 3, "tickling": True},
+            "nobody knows what came of intent 8, 9; the scan of request 3 was cut off; the tickle was on",
+        ),
+        ("found", FOUND, "every instrument answers"),
+        (
+            "identity",
+            {
+                "instrument": "rf",
+                "manufacturer": "Plain",
+                "model": "RF-1",
+                "serial": "7",
+                "firmware": "1.0",
+                "simulated": True,
+            },
+            "rf: Plain RF-1 7 1.0 (simulated)",
+        ),
+        ("stop", {}, "the daemon stopped in order"),
+        ("clock", {"step_s": -3600.5}, "the wall clock stepped by -3600.5 s"),
+    ],
+)
+def test_every_kind_of_entry_is_a_sentence(kind: str, data: dict[str, Any], words: str) -> None:
+    assert sentence({"kind": kind, "data": data}) == words
 
 
 def test_an_entry_of_another_version_is_shown_as_it_is() -> None:

@@ -30,10 +30,10 @@ def test_the_example_is_read_in_si_and_the_rest_has_its_defaults(tmp_path: Path)
 
 
 def test_everything_about_a_scan_may_be_said() -> None:
-    more = 'species = "171Yb+"\nwidth = "500 Hz"\npasses = 1000\nmin_contrast = "10 %"\n'
+    more = 'species = "171Yb+"\nwidth = "500 Hz"\npasses = 25\nmin_contrast = "10 %"\n'
     config = parse(RING + SCANS.replace('mode = "x"\n', 'mode = "z"\n' + more), FILE)
     (scan,) = config.scans.values()
-    assert (scan.mode, scan.species, scan.width_hz, scan.passes, scan.min_contrast) == ("z", "171Yb+", 500.0, 1000, 0.1)
+    assert (scan.mode, scan.species, scan.width_hz, scan.passes, scan.min_contrast) == ("z", "171Yb+", 500.0, 25, 0.1)
 
 
 def test_a_file_without_scans_is_as_it_was() -> None:

@@ -122,6 +122,7 @@ def bench(
             record=record,
             clock=clock,
             judges=judges,
+            estimates=judges,
             situation=Situation(values={}, outputs={}, contents=Contents(presence="unknown")),
         )
         controller = Controller(desk)

@@ -22,7 +22,7 @@ from trapd.record import verify
 from trapd_simulated import Rack
 
 KILLS = asked_for("TRAPD_KILLS", 10)
-LONG = SCANNED.replace('target = "50 Hz"', 'target = "1 Hz"\npasses = 1000')
+LONG = SCANNED.replace('target = "50 Hz"', 'target = "1 Hz"\npasses = 300')
 BURST_S = 0.52
 
 

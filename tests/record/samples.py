@@ -73,6 +73,16 @@ def scan_point(request: int | SameCommit, intent: int | SameCommit | None, **fie
     return Draft(kind="scan_point", actor="scans", data=data | {"at_us": NOON_US + 10_000} | fields)
 
 
+def plan(request: int | SameCommit, **fields: Any) -> Draft:
+    data: dict[str, Any] = {"request": request, "scan": "y", "mode": "y", "species": "40Ca+"}
+    return Draft(kind="plan", actor="ada", data=data | {"predicted_hz": 2_033_000.0, "min_contrast": 0.05} | fields)
+
+
+def result(request: int | SameCommit, state: str = "failed", **fields: Any) -> Draft:
+    data = {"request": request, "state": state, "error": "scan: the trap is empty", "code": "conflict"}
+    return Draft(kind="result", actor="ada", data=data | fields)
+
+
 def finding(request: int | SameCommit, state: str = "found", **fields: Any) -> Draft:
     data: dict[str, Any] = {"request": request, "scan": "y", "mode": "y", "species": "40Ca+", "state": state}
     data |= {"frequency_hz": 2_033_100.0, "uncertainty_hz": 30.0, "predicted_hz": 2_033_000.0, "min_contrast": 0.05}

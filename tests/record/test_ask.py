@@ -10,7 +10,19 @@ from pathlib import Path
 
 import pytest
 
-from tests.record.samples import BOOT, NOON_US, StandingClock, intent, note, outcome, plain, refusal, request, write_day
+from tests.record.samples import (
+    BOOT,
+    NOON_US,
+    StandingClock,
+    intent,
+    note,
+    outcome,
+    plain,
+    refusal,
+    request,
+    result,
+    write_day,
+)
 from trapd.errors import BadRequest, NotFound
 from trapd.record import Draft, Reader, Record, SameCommit, export
 from trapd.record.tables import metadata, views
@@ -85,6 +97,28 @@ def test_an_accepted_verdict_is_no_refusal(record: Record, reader: Reader) -> No
     data = {"request": None, "accepted": True, "reasons": [], "warnings": [{"rule": "depth"}]}
     record.append(Draft(kind="verdict", actor="guard", data=data)).result()
     assert reader.refusals() == ()
+
+
+def test_what_was_refused_before_it_came_to_a_verdict_is_a_refusal_too(record: Record, reader: Reader) -> None:
+    accepted = {"accepted": True, "reasons": [], "warnings": []}
+    record.append(request(why="try"), result(SameCommit(0), error="set: ada claims the trap")).result()
+    record.append(request(), Draft(kind="verdict", actor="ada", data={"request": SameCommit(0), **accepted})).result()
+    record.append(result(3, error="the scan ends here")).result()  # it was accepted
+    record.append(request(), result(SameCommit(0), "stopped", code="superseded")).result()
+    record.append(request(), result(SameCommit(0), code="not_confirmed")).result()
+    record.append(request(), refusal(SameCommit(0))).result()
+    claimed, *guarded = reader.refusals()
+    assert (claimed.seq, claimed.request, claimed.who, claimed.why) == (2, 1, "ada", "try")
+    assert (claimed.rule, claimed.message) == ("conflict", "set: ada claims the trap")
+    assert [claimed.quantity, claimed.unit, claimed.found, claimed.bound, claimed.nearest] == [None] * 5
+    assert [one.rule for one in guarded] == ["window", "range"]
+    assert [one.seq for one in reader.refusals(limit=1, newest=True)] == [11]
+
+
+def test_requests_name_the_scan_that_was_asked_for(record: Record, path: Path) -> None:
+    record.append(request(kind="scan", scan="radial"), request()).result()
+    rows = plain(path).execute("SELECT kind, scan, point FROM requests").fetchall()
+    assert rows == [("scan", "radial", None), ("set", None, None)]
 
 
 def test_the_state_at_a_moment_is_the_last_command_of_each_setpoint_by_then(

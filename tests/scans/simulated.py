@@ -28,7 +28,7 @@ class Scanned:
     finding: Finding
     truth_hz: float
     passes: int
-    points: int
+    points: Points
 
     @property
     def is_within_68(self) -> bool:
@@ -40,10 +40,20 @@ class Scanned:
 
 
 class SimulatedBench:
-    """One rack without its ports, its trap on and settled, an ion in it. ``intensity_rms``: slow drift of the light."""
+    """One rack without its ports, its trap on and settled, an ion in it. ``intensity_rms``: slow drift of the light;
+    ``greatest_contrast`` below 0: the ion is brighter while it moves."""
 
-    def __init__(self, seed: int, *, intensity_rms: float = 0.0, section: ScanSection = SECTION) -> None:
-        ion = replace(IonSettings(), intensity_rms=intensity_rms, intensity_time_s=15.0)
+    def __init__(
+        self,
+        seed: int,
+        *,
+        intensity_rms: float = 0.0,
+        greatest_contrast: float = 0.9,
+        section: ScanSection = SECTION,
+    ) -> None:
+        ion = replace(
+            IonSettings(), intensity_rms=intensity_rms, intensity_time_s=15.0, greatest_contrast=greatest_contrast
+        )
         self.section = section
         self.clock = ManualClock()
         self.rack = Rack(RackSettings(ion=ion), seed=seed, clock=self.clock)
@@ -58,12 +68,12 @@ class SimulatedBench:
     def scan(self, seed: int, *, away_hz: float = 0.0) -> Scanned:
         """One scan. It expects the line up to a third of its window from where it is; ``away_hz``: or so far away."""
         random = np.random.default_rng(seed)
-        truth_hz = self.rack.spectrum("x")
+        truth_hz = self.rack.spectrum(self.section.mode)
         assert not isnan(truth_hz)
         expected_hz = truth_hz + away_hz + random.uniform(-15e3, 15e3)
-        prediction = Prediction(species="40Ca+", mode="x", frequency_hz=expected_hz, uncertainty_hz=10e3)
-        limits = TickleLimits(level_max_v=0.02, level_resolution_v=1e-5)
-        plan = plan_scan(self.section, prediction, [], limits, floor_per_s=500.0)
+        prediction = Prediction(species="40Ca+", mode=self.section.mode, frequency_hz=expected_hz, uncertainty_hz=10e3)
+        limits = TickleLimits(level_max_v=0.02)
+        plan = plan_scan(self.section, prediction, [], limits, self.section.tickle_v, floor_per_s=500.0)
         self.rack.front_panel("tickle", f"VOLT {plan.level_v}")
         rows = [self._count(None) for _ in range(SHOTS)]
         for number in range(1, plan.passes + 1):
@@ -74,7 +84,7 @@ class SimulatedBench:
             finding = estimate(points, plan.question)
             if is_enough(finding, plan.question, number):
                 break
-        return Scanned(finding=finding, truth_hz=truth_hz, passes=number, points=len(rows))
+        return Scanned(finding=finding, truth_hz=truth_hz, passes=number, points=points)
 
     def _count(self, frequency_hz: float | None) -> tuple[float, float, float, float]:
         dwell_s = self.section.dwell_s

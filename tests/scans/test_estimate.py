@@ -108,7 +108,7 @@ def test_a_shallow_line_is_found_with_low_confidence_or_not_at_all():
 
 
 def test_a_deep_dip_is_flagged():
-    assert "deep" in estimate(scan(truth=replace(TRUTH, contrast=0.4)), QUESTION).flags
+    assert "deep" in estimate(scan(truth=replace(TRUTH, contrast=0.6)), QUESTION).flags
     assert "deep" not in estimate(scan(truth=replace(TRUTH, contrast=0.1), passes=12), QUESTION).flags
 
 
@@ -232,12 +232,12 @@ TARGET = replace(QUESTION, target_hz=50.0)
 @pytest.mark.parametrize(
     ("finding", "question", "passes", "enough"),
     [
-        (FOUND, TARGET, 2, True),
-        (FOUND, TARGET, 1, False),
+        (FOUND, TARGET, 3, True),
+        (FOUND, TARGET, 2, False),
         (FOUND, QUESTION, 9, False),
         (replace(FOUND, uncertainty_hz=51.0), TARGET, 9, False),
         (replace(FOUND, likelihood_ratio=26.0), TARGET, 9, False),
-        (Finding(state="none", message="", contrast_limit=0.04), TARGET, 2, True),
+        (Finding(state="none", message="", contrast_limit=0.04), TARGET, 3, True),
         (Finding(state="none", message="", contrast_limit=0.06), TARGET, 9, False),
         (Finding(state="unclear", message=""), TARGET, 9, False),
         (Finding(state="vanished", message=""), TARGET, 1, True),

@@ -152,10 +152,9 @@ class ScanBody(Body):
     interrupt: bool = False
 
 
-class ClaimBody(Body):
+class ClaimBody(MoveBody):
     """``until``: no end when left out."""
 
-    why: Why
     until: Time | None = None
 
 

@@ -22,7 +22,8 @@ def routes(controller: Controller) -> APIRouter:
 
     @router.post("/v1/claim", summary="Keep the trap for yourself: others are refused, the schedule waits")
     async def claim(body: ClaimBody, caller: Operating) -> Answer:
-        return await done(controller, Request(kind="claim", author=caller.name, why=body.why, until_us=body.until))
+        claim = Request(kind="claim", author=caller.name, why=body.why, until_us=body.until, interrupt=body.interrupt)
+        return await done(controller, claim)
 
     @router.post("/v1/release", summary="End a claim")
     async def release(caller: Operating, body: Annotated[ReleaseBody, _RELEASE]) -> Answer:

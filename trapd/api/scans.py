@@ -9,7 +9,7 @@ from fastapi import Request as HttpRequest
 
 from trapd.api.access import Operating, Reading
 from trapd.api.answers import Answer, entry, plain, timed
-from trapd.api.bodies import AskedDue, AskedFrequencies, ScanBody, Seq
+from trapd.api.bodies import Asked, AskedDue, AskedFrequencies, Limit, Name, ScanBody, Seq, Time
 from trapd.api.moves import begun
 from trapd.api.service import Service, upcoming
 from trapd.errors import NotFound
@@ -17,6 +17,18 @@ from trapd.record import Entry, Reader
 from trapd.setpoint import Request
 
 _MANY = 1000
+
+
+class AskedScans(Asked):
+    """Of those made: in order, the newest last; those after ``after``, or without it the last ones."""
+
+    after: Seq | None = None
+    limit: Limit = 100
+    scan: Name | None = None
+    state: Name | None = None
+    who: Name | None = None
+    since: Time | None = None
+    until: Time | None = None
 
 
 def routes(service: Service, reader: Reader) -> APIRouter:
@@ -28,10 +40,20 @@ def routes(service: Service, reader: Reader) -> APIRouter:
         request = Request(kind="scan", author=caller.name, why=body.why, scan=body.scan, interrupt=body.interrupt)
         return await begun(service.controller, http, request)
 
-    @router.get("/v1/scans", summary="The scans of the trap file, each with its newest finding")
-    def scans(caller: Reading) -> Answer:
+    @router.get("/v1/scans", summary="The scans of the trap file, each with its newest finding; and those made")
+    def scans(caller: Reading, asked: Annotated[AskedScans, Query()]) -> Answer:
         listed = [{**plain(one), "finding": _newest(reader, name)} for name, one in service.config.scans.items()]
-        return Answer({"scans": listed})
+        made = reader.scans(
+            after=asked.after or 0,
+            newest=asked.after is None,
+            limit=asked.limit,
+            scan=asked.scan,
+            state=asked.state,
+            who=asked.who,
+            since_us=asked.since,
+            until_us=asked.until,
+        )
+        return Answer({"scans": listed, "made": [timed(one, one.time_us) for one in made]})
 
     @router.get("/v1/scans/{seq}", summary="One scan by the entry of its request: plan, points, estimate, finding")
     def told(caller: Reading, seq: Seq) -> Answer:
@@ -68,8 +90,8 @@ def routes(service: Service, reader: Reader) -> APIRouter:
 
 
 def _newest(reader: Reader, scan: str) -> dict[str, Any] | None:
-    found = reader.findings(scan=scan, limit=1, newest=True)
-    return _data(reader.entry(found[0].seq)) if found else None
+    found = [one.finding for one in reader.scans(scan=scan, newest=True) if one.finding is not None]
+    return _data(reader.entry(found[-1])) if found else None
 
 
 def _told(reader: Reader, seq: int) -> dict[str, Any]:

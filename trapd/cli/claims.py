@@ -21,14 +21,16 @@ _WHEN = "A while (30min, 2h), 18:00, or a time (without an offset: local)."
     options=(
         click.option("--until", metavar="WHEN", help=f"{_WHEN} Default: until released."),
         why_option,
+        interrupt_option,
         at_option,
     ),
 )
-def claim_command(until: str | None, why: str, at: str | None) -> None:
+def claim_command(until: str | None, why: str, interrupt: bool, at: str | None) -> None:
     """Keep the trap for yourself. Others are refused unless they --interrupt, and the schedule waits. Off ends it."""
     moment = None if until is None else read_until(until, datetime.now(UTC))
     with Client(at) as client:
-        tell(client.claim(why, until=moment), lambda answer: _show("claimed", answer, claim_words(answer["claim"])))
+        claimed = client.claim(why, until=moment, interrupt=interrupt)
+        tell(claimed, lambda answer: _show("claimed", answer, claim_words(answer["claim"])))
 
 
 @command("trapd release", 'trapd release --interrupt --why "she went home"')

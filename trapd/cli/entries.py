@@ -15,13 +15,12 @@ _LONGEST = 160
 
 
 def sentence(entry: Data) -> str:
-    """What the entry says, shortened; the whole of it is in ``--json``."""
+    """What the entry says; the whole of it is in ``--json``."""
     say = _SENTENCES.get(entry["kind"], _anything)
     try:
-        text = say(entry["data"])
+        return say(entry["data"])
     except (KeyError, TypeError, ValueError, IndexError, AttributeError):  # written by another version
-        text = _anything(entry["data"])
-    return text if len(text) <= _LONGEST else text[: _LONGEST - 1] + "…"
+        return _anything(entry["data"])
 
 
 def contents_words(contents: Data) -> str:
@@ -39,7 +38,8 @@ def contents_words(contents: Data) -> str:
 
 
 def _anything(data: Data) -> str:
-    return json.dumps(data, ensure_ascii=False, default=str)
+    text = json.dumps(data, ensure_ascii=False, default=str)
+    return text if len(text) <= _LONGEST else text[: _LONGEST - 1] + "…"
 
 
 def _values(values: Data) -> str:
@@ -144,6 +144,27 @@ def _claim(data: Data) -> str:
     return f"{data['state']}{until}" + _why(data)
 
 
+def _alarm(data: Data) -> str:
+    return f"{data['condition']}: {data['message']} (request {data['request']})"
+
+
+def _identity(data: Data) -> str:
+    said = [str(data[key]) for key in ("manufacturer", "model", "serial", "firmware") if data[key]]
+    return f"{data['instrument']}: {' '.join(said)}" + (" (simulated)" if data["simulated"] else "")
+
+
+def _found(data: Data) -> str:
+    parts = [*data.get("differences", ())]
+    parts += [f"{name} does not answer: {why}" for name, why in data.get("unreachable", {}).items()]
+    if data.get("open_intents"):
+        parts.append(f"nobody knows what came of intent {', '.join(map(str, data['open_intents']))}")
+    if data.get("open_scan"):
+        parts.append(f"the scan of request {data['open_scan']} was cut off")
+    if data.get("tickling"):
+        parts.append("the tickle was on")
+    return "; ".join(parts) or ("every instrument answers" if "unreachable" in data else "nothing differs")
+
+
 def _token(data: Data) -> str:
     return f"{data['action']} {data['name']}" + (f" ({data['role']})" if data.get("role") else "")
 
@@ -167,8 +188,12 @@ _SENTENCES: Mapping[str, Callable[[Data], str]] = {
     "claim": _claim,
     "pause": _claim,
     "token": _token,
+    "alarm": _alarm,
+    "identity": _identity,
+    "found": _found,
+    "stop": lambda data: "the daemon stopped in order",
+    "clock": lambda data: f"the wall clock stepped by {data['step_s']:+g} s",
     "start": lambda data: ", ".join(f"{name} {version}" for name, version in data["software"].items()),
     "configuration": lambda data: str(data["source"]),
     "heartbeat": lambda data: _values(data["values"]),
-    "found": lambda data: "; ".join(data["differences"]),
 }

@@ -16,17 +16,17 @@ _STYLES = {"found": GOOD, "none": GOOD, "unclear": CAREFUL, "vanished": CAREFUL}
 def finding_words(data: Data) -> str:
     """``2.155021 MHz ± 48 Hz, predicted 2.155 MHz ± 12 kHz: +21 Hz, +0.0 σ``, or why there is no number."""
     if data["state"] != "found":
-        return str(data["message"])
+        return str(data["message"]).rstrip(".")
     found = with_uncertainty(data["frequency_hz"], data["uncertainty_hz"])
     off = _difference(data["frequency_hz"] - data["predicted_hz"], data["difference_sigma"])
     return f"{found}, predicted {_predicted(data)}: {off}"
 
 
 def show_finding(finding: Data) -> None:
-    """One line, and each flag with what it means and asks for."""
+    """One line, with the entry of the request; and each flag with what it means and asks for."""
     flags = f"; {', '.join(finding['flags'])}" if finding["flags"] else ""
     state = finding["state"]
-    say((state, _STYLES.get(state, CAREFUL)), f"  {finding_words(finding)}{flags} (entry {finding['seq']})")
+    say((state, _STYLES.get(state, CAREFUL)), f"  {finding_words(finding)}{flags} (entry {finding['request']})")
     for flag in finding["flags"]:
         say((flag, CAREFUL), f"  {FLAGS.get(flag, '')}", indent=2)
 

@@ -165,8 +165,10 @@ def _progress(answer: Data) -> Iterator[Callable[[JsonEntry], None] | None]:
         return
     from rich.progress import BarColumn, Progress, TextColumn
 
-    columns = (TextColumn("{task.description}"), BarColumn(30), TextColumn("{task.completed}/{task.total}"))
-    with Progress(*columns, console=console(), transient=True) as bar:
+    screen = console()
+    bars = BarColumn(min(30, max(4, screen.width - 48)))  # what stands beside it is never cut
+    columns = (TextColumn("{task.description}"), bars, TextColumn("{task.completed}/{task.total}"))
+    with Progress(*columns, console=screen, transient=True) as bar:
         task = bar.add_task("starting", total=answer["steps"])
 
         def show(entry: JsonEntry) -> None:

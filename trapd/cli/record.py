@@ -45,9 +45,10 @@ def _view(name: str, help: str) -> Callable[[Command], Command]:
 @click.option(
     "--limit", type=click.IntRange(1, 1000), default=40, show_default=True, help="At most so many, the newest."
 )
+@click.option("--points", is_flag=True, help="Also what belongs to single points of scans.")
 @_view("setpoints", "What was sent and what was read back.")
 @_view("refused", "What was refused, and why.")
-@_view("scans", "What scans found, or that they found nothing.")
+@_view("scans", "Every scan that began, and how it ended.")
 @_view("frequencies", "The secular frequencies that were measured.")
 @_view("due", "What became of what was due.")
 @click.option(
@@ -64,6 +65,7 @@ def record_command(
     kind: str | None,
     who: str | None,
     limit: int,
+    points: bool,
     views: tuple[str, ...],
     export: tuple[str, Path] | None,
     at: str | None,
@@ -71,7 +73,8 @@ def record_command(
     """What was asked, judged, sent and read back. The newest last: every entry, or one of the tables --setpoints (what was
     sent), --refused (what was not), --scans, --frequencies and --due.
 
-    Asks the running daemon, or a file with --file, also while a daemon writes it. Times are UTC.
+    What belongs to single points of scans is left out without --points. Asks the running daemon, or a file with --file,
+    also while a daemon writes it. Times are UTC.
     """
     one_source(file, at)
     view = _one_of(views, kind, who)
@@ -79,10 +82,15 @@ def record_command(
         _export(file, *export, view)
         return
     moment = None if since is None else read_moment(since, datetime.now(UTC))
-    asked: dict[str, Any] = {"kind": kind, "who": who, "limit": limit, "since": moment}
-    rows = from_daemon(at, view, **asked) if file is None else from_file(file, view, **asked)
-    tell({view: rows}, lambda _: _show(view, rows))
-    if len(rows) == limit and not wants_json():
+    whole = points or bool(kind) or view not in ("entries", "setpoints")
+    asked: dict[str, Any] = {"kind": kind, "who": who, "limit": limit, "since": moment, "points": whole}
+    rows, left_out = from_daemon(at, view, **asked) if file is None else from_file(file, view, **asked)
+    tell({view: rows, "left_out": left_out}, lambda _: _show(view, rows))
+    if wants_json():
+        return
+    if left_out:
+        say((f"{left_out} rows of single points of scans are left out; --points shows them", FAINT))
+    if len(rows) == limit:
         say((f"the newest {limit}; --limit shows more", FAINT))
 
 
@@ -120,7 +128,7 @@ def _refused(one: Data) -> tuple[str, ...]:
 
 
 def _found(one: Data) -> tuple[str, ...]:
-    number = one["message"]
+    number = (one["message"] or "-").rstrip(".")
     if one["state"] == "found":
         number = with_uncertainty(one["frequency_hz"], one["uncertainty_hz"])
     return one["scan"], f"{one['mode']} of {one['species']}", one["state"], _flagged(number, one), _author(one)
@@ -170,7 +178,8 @@ def _show(name: str, rows: list[dict[str, Any]]) -> None:
         return short if len(days) == 1 else f"{day} {short}"
 
     heading = f"UTC {days[0]}" if len(days) == 1 else "UTC"
-    table((">entry", heading, *columns), [(str(one["seq"]), time(one), *cells(one)) for one in rows])
+    entry = "request" if name == "frequencies" else "seq"  # a scan is named by the entry of its request
+    table((">entry", heading, *columns), [(str(one[entry]), time(one), *cells(one)) for one in rows])
 
 
 def _export(file: Path | None, form: str, path: Path, view: str) -> None:

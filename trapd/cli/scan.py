@@ -5,10 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
+from tempfile import TemporaryFile
+from typing import Any
 
 import click
 
-from trapd.cli.answer import INTERRUPTED, Data, tell, wants_json
+from trapd.cli.answer import INTERRUPTED, Data, tell_error, tell_json, wants_json
 from trapd.cli.finding import show_finding
 from trapd.cli.moves import fate
 from trapd.cli.options import at_option, command, hasty_why_option, interrupt_option
@@ -16,7 +18,7 @@ from trapd.cli.spectrum import COLUMNS, MARGIN, Picture
 from trapd.cli.terminal import BAD, console, is_terminal, say
 from trapd.cli.verdicts import tell_refusal
 from trapd.client import Client, JsonEntry
-from trapd.errors import BadRequest, GuardRefused, TrapdError
+from trapd.errors import BadRequest, GuardRefused, NotConfirmed, Superseded, TrapdError
 
 STOPPED = "the scan was stopped, its tickle goes off; every output holds"
 OVER = "the scan had ended already; `trapd record --scans` tells how"
@@ -40,7 +42,7 @@ def scan_command(name: str, why: str, output: Path | None, interrupt: bool, at: 
     """Measure a secular frequency now, and watch it converge. NAME is one of the trap file's [scans]; the ion is tickled and
     its photons counted.
 
-    Exit code 0 also when there is no resonance: that is a result. Ctrl-C stops the scan.
+    Exit code 0 also when there is no resonance: that is a result; 4 when the counts vanished. Ctrl-C stops the scan.
     """
     _require_new(output)
     with Client(at) as client:
@@ -54,8 +56,7 @@ def scan_command(name: str, why: str, output: Path | None, interrupt: bool, at: 
         except KeyboardInterrupt:
             asked = {"kind": "scan", "scan": name, "why": why}
             entry, words = (begun["entry"], "") if begun else fate(client, newest, asked)
-            click.echo(f"\n{_stopped(client, entry) if entry else words}", err=True)
-            click.get_current_context().exit(INTERRUPTED)
+            _tell_interrupted(client, begun or {"entry": entry}, words)
 
 
 def _require_new(output: Path | None) -> None:
@@ -67,6 +68,10 @@ def _require_new(output: Path | None) -> None:
     if output.exists() or not output.parent.is_dir():
         why = "exists already" if output.exists() else "is in no folder that exists"
         raise BadRequest(f'-o "{output}" {why}; nothing was sent')
+    try:
+        TemporaryFile(dir=output.parent).close()
+    except OSError as error:
+        raise BadRequest(f'-o "{output}" cannot be written: {error.strerror}; nothing was sent') from error
 
 
 def _require_scan(client: Client, name: str) -> None:
@@ -77,17 +82,24 @@ def _require_scan(client: Client, name: str) -> None:
         raise BadRequest(f'"{name}" is no scan of this trap; {there}; nothing was sent')
 
 
-def _stopped(client: Client, request: int) -> str:
-    """A scan is cheap to repeat, and a tickle should not go on unseen."""
+def _tell_interrupted(client: Client, begun: Data, words: str) -> None:
+    """Ctrl-C. A scan is cheap to repeat, and a tickle should not go on unseen: it is stopped if it goes on still."""
+    entry, state, finding = begun["entry"], "stopped", None
     scanning = client.status()["situation"]["scanning"]
-    if scanning is None or scanning["request"] != request:
-        return OVER
-    client.stop("Ctrl-C at the command line that followed the scan")
-    return STOPPED
+    if entry is not None and scanning is not None and scanning["request"] == entry:
+        client.stop("Ctrl-C at the command line that followed the scan")
+        words = STOPPED
+    elif entry is not None:
+        told = client.scan_at(entry)
+        state, finding, words = (told["result"] or {"state": "unknown"})["state"], told["finding"], OVER
+    click.echo(f"\n{words}", err=True)
+    if wants_json():
+        tell_json(_end(begun, state, finding, Superseded(words)))
+    click.get_current_context().exit(INTERRUPTED)
 
 
 def _tell_end(client: Client, begun: Data, output: Path | None) -> None:
-    """How the scan ended, with the exit code of that."""
+    """How the scan ended, with the exit code of that. The finding is told before its figure can fail."""
     finding, error = None, None
     try:
         with _followed(begun["plan"]) as progress:
@@ -96,26 +108,37 @@ def _tell_end(client: Client, begun: Data, output: Path | None) -> None:
         if "state" not in found.details:  # nobody can tell how it ended
             raise
         error = found
-    end = {
-        **begun,
-        "state": error.details["state"] if error else "done",
-        "finding": finding,
-        "error": error and error.message,
-        "code": error and error.code,
-        "figure": str(output) if output and not error else None,
-    }
-    if output and not error:
-        _draw(client, begun["entry"], output)
-    tell(end, _show_end, exit_code=error.exit_code if error else 0)
+    end = _end(begun, error.details["state"] if error else "done", finding, error)
+    if not wants_json():
+        _show_end(end)
+    if output and finding:
+        try:
+            _draw(client, begun["entry"], output)
+            end["figure"] = str(output)
+        except TrapdError as failed:
+            error = failed
+            end |= {"error": error.message, "code": error.code}
+    if wants_json():
+        tell_json(end)
+    elif end["figure"]:
+        say(f"drawn into {end['figure']}")
+    elif finding and error:
+        tell_error(error)
+    vanished = NotConfirmed.exit_code if finding and finding["state"] == "vanished" else 0
+    if code := vanished or (error.exit_code if error else 0):
+        click.get_current_context().exit(code)
+
+
+def _end(begun: Data, state: str, finding: Data | None, error: TrapdError | None) -> dict[str, Any]:
+    said = {"error": error and error.message, "code": error and error.code}
+    return {**begun, "state": state, "finding": finding, **said, "figure": None}
 
 
 def _show_end(end: Data) -> None:
     if end["finding"] is None:
         say((end["state"], BAD), f"  {end['error']} (entry {end['entry']})")
-        return
-    show_finding(end["finding"])
-    if end["figure"]:
-        say(f"drawn into {end['figure']}")
+    else:
+        show_finding(end["finding"])
 
 
 def _draw(client: Client, request: int, output: Path) -> None:
@@ -141,7 +164,7 @@ def _followed(plan: Data) -> Iterator[Callable[[JsonEntry], None] | None]:
 
         def tell_pass(entry: JsonEntry) -> None:
             picture.note(entry)
-            if entry["kind"] in ("estimate", "finding"):
+            if entry["kind"] in ("estimate", "finding") and picture.passed:
                 click.echo(picture.line())
 
         yield tell_pass
@@ -153,7 +176,7 @@ def _followed(plan: Data) -> Iterator[Callable[[JsonEntry], None] | None]:
     columns = max(min(COLUMNS, screen.width - MARGIN - 1), _NARROWEST)
 
     def drawn() -> Text:
-        return Text("\n".join(picture.lines(columns)), no_wrap=True, overflow="crop")
+        return Text("\n".join(picture.lines(columns)), overflow="fold")
 
     with Live(console=screen, get_renderable=drawn, refresh_per_second=_PER_SECOND):
         yield picture.note

@@ -40,6 +40,12 @@ class Picture:
         elif entry["kind"] in ("estimate", "finding"):
             self._estimate = data
 
+    @property
+    def passed(self) -> bool:
+        """Whether the pass that was counted last is complete: what is known after half of one is no estimate."""
+        counted = [one for one in self._points if one["pass_number"] == self._pass_number]
+        return bool(sum(one["frequency_hz"] is not None for one in counted) >= self._plan["points"])
+
     def lines(self, columns: int) -> list[str]:
         plan = self._plan
         what = f"{plan['mode']} of {plan['species']}, tickle {millivolts(plan['level_v'])}"
@@ -61,13 +67,13 @@ class Picture:
             if off
             else ""
         )
-        return f"{len(self._points)} counts{dark}"
+        return f"{len(self._points)} points{dark}"
 
     def _estimated(self) -> str:
         if self._estimate is None:
             return "no estimate yet"
         frequency_hz = self._estimate["frequency_hz"]
-        if frequency_hz is None:
+        if frequency_hz is None or self._estimate["state"] == "vanished":
             return str(self._estimate["message"])
         off = hertz(frequency_hz - self._plan["predicted_hz"], signed=True)
         return f"f = {with_uncertainty(frequency_hz, self._estimate['uncertainty_hz'])}, {off} from the prediction"
@@ -127,7 +133,7 @@ def _axis(across: _Across) -> str:
 
 
 def _estimated(across: _Across, estimate: Data | None) -> str:
-    if estimate is None or estimate.get("frequency_hz") is None:
+    if estimate is None or estimate["frequency_hz"] is None or estimate["state"] == "vanished":
         return "-"
     return across.marked(estimate["frequency_hz"], estimate["uncertainty_hz"], "E")
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 
 from trapd.cli.amounts import ends_of, value_of
 from trapd.cli.answer import Data, tell, wants_json
@@ -14,8 +14,9 @@ from trapd.cli.terminal import BAD, CAREFUL, FAINT, STRONG, say, table
 from trapd.cli.verdicts import show_reasons, show_species, show_warnings
 from trapd.cli.words import utc
 from trapd.client import Client
+from trapd.clock import SystemClock
 from trapd.errors import TrapdError
-from trapd.setpoint import AMPLITUDE, FREQUENCY
+from trapd.setpoint import AMPLITUDE, FREQUENCY, TICKLE_OUTPUT
 
 _MOST_DUE = 3
 
@@ -28,7 +29,9 @@ def status_command(at: str | None) -> None:
         status = client.status()
         trap = {} if wants_json() else client.trap()
         allowed = {} if wants_json() or not _is_driven(status["situation"]) else _allowed_now(client)
-    tell(status, lambda _: _show(status, trap, allowed))
+        tickle = _tickle_of(client) if status["situation"]["off_pending"] else None
+    now_us = SystemClock().now_us()
+    tell(status, lambda _: _show(status, trap, allowed, tickle, now_us))
 
 
 def _is_driven(situation: Data) -> bool:
@@ -43,12 +46,25 @@ def _allowed_now(client: Client) -> Data:
         return {}
 
 
-def state_sentence(situation: Data) -> str:
-    """The state of the trap in plain words."""
+def _tickle_of(client: Client) -> str | None:
+    """The instrument that tickles, as far as it was ever told to be off."""
+    try:
+        told = client.setpoints(setpoint=TICKLE_OUTPUT, limit=1)
+    except TrapdError:
+        return None
+    return str(told[-1]["instrument"]) if told else None
+
+
+def state_sentence(situation: Data, tickle: str | None = None) -> str:
+    """The state of the trap in plain words. ``tickle``: the instrument that tickles; nobody need have asked for off where
+    it alone does not confirm, as after a scan."""
+    pending = situation["off_pending"]
+    if pending == [tickle] and _is_driven(situation):
+        return f"{state_sentence({**situation, 'off_pending': []})[:-1]}; the tickle ({tickle}) is not confirmed off."
     contents, moving, scanning = situation["contents"], situation["moving"], situation["scanning"]
     who, presence = contents_words(contents), contents["presence"]
-    if situation["off_pending"]:
-        return f"Off was asked for and is not confirmed by {', '.join(situation['off_pending'])}."
+    if pending:
+        return f"Off was asked for and is not confirmed by {', '.join(pending)}."
     if not any(situation["outputs"].values()):
         return "Off." if presence == "none" else f"Off. In the trap: {who}."
     held = {
@@ -72,12 +88,13 @@ def _scan_words(scanning: Data) -> str:
     return f"Scanning {what}, pass {scanning['pass_number']} of {scanning['passes']}"
 
 
-def _show(status: Data, trap: Data, allowed: Data) -> None:
+def _show(status: Data, trap: Data, allowed: Data, tickle: str | None, now_us: int) -> None:
     situation, verdict, record = status["situation"], status["verdict"], status["record"]
     simulated = " (simulated)" if status["simulated"] else ""
-    say((state_sentence(situation), STRONG), f"  {status['name']}{simulated}")
+    say((state_sentence(situation, tickle), STRONG), f"  {status['name']}{simulated}")
     _show_troubles(situation, verdict)
-    _show_plans(situation, status["upcoming"])
+    for line in plan_lines(situation, status["upcoming"], now_us):
+        say(*line)
     say()
     rows = [_setpoint_row(name, limit, situation, allowed) for name, limit in trap["setpoints"].items()]
     table(("setpoint", "output", ">value", "limits", "allowed now" if allowed else ""), rows)
@@ -106,15 +123,24 @@ def _show_troubles(situation: Data, verdict: Data | None) -> None:
     show_warnings(verdict)
 
 
-def _show_plans(situation: Data, upcoming: Sequence[Data]) -> None:
-    """Who has the trap, and what comes by itself."""
-    if situation["claim"]:
-        say(("claimed", CAREFUL), f"  {claim_words(situation['claim'])}")
-    if situation["pause"]:
-        say(("paused", CAREFUL), f"  {pause_words(situation['pause'])}")
+def plan_lines(situation: Data, upcoming: Sequence[Data], now_us: int) -> Iterator[Sequence[str | tuple[str, str]]]:
+    """Who has the trap, and what comes by itself; nothing whose time has passed."""
+    claim, pause = (_unless_over(situation[what], now_us) for what in ("claim", "pause"))
+    if claim:
+        yield ("claimed", CAREFUL), f"  {claim_words(claim)}"
+    if pause:
+        yield ("paused", CAREFUL), f"  {pause_words(pause)}"
     if upcoming:
-        comes = ", ".join(f"{one['schedule']} {utc(one['due_us'])}" for one in upcoming[:_MOST_DUE])
-        say(f"next due: {comes}")
+        until_us = pause["until_us"] if pause else 0
+        comes = (
+            f"{one['schedule']} {utc(one['due_us'])}" + (" (paused)" if one["due_us"] < until_us else "")
+            for one in upcoming[:_MOST_DUE]
+        )
+        yield (f"next due: {', '.join(comes)}",)
+
+
+def _unless_over(one: Data | None, now_us: int) -> Data | None:
+    return None if one is None or (one["until_us"] is not None and one["until_us"] <= now_us) else one
 
 
 def _setpoint_row(name: str, limit: Data, situation: Data, allowed: Data) -> tuple[str, ...]:

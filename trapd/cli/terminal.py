@@ -15,6 +15,10 @@ if TYPE_CHECKING:
     from rich.console import Console
 
 _UNWRAPPED = 10_000
+_LEAST = 20
+"""Columns that a cell of text needs to be read; a narrower one is no table any more."""
+
+_GAP = 2
 
 GOOD, BAD, CAREFUL, STRONG, FAINT = "green", "bold red", "yellow", "bold", "dim"
 
@@ -32,7 +36,7 @@ def console() -> Console:
 
 def say(*parts: str | tuple[str, str], indent: int = 0) -> None:
     """One paragraph of pieces, each plain or with its style; wrapped lines keep the indent."""
-    if not is_terminal():
+    if not (parts and is_terminal()):
         click.echo(" " * indent + "".join(part if isinstance(part, str) else part[0] for part in parts))
         return
     from rich.padding import Padding
@@ -44,19 +48,50 @@ def say(*parts: str | tuple[str, str], indent: int = 0) -> None:
 def table(columns: Sequence[str], rows: Iterable[Sequence[str]], *, indent: int = 0, wrapping: int = 1) -> None:
     """Aligned columns under their headings, ">" before one for numbers that stand right.
 
-    The last ``wrapping`` columns wrap when the terminal is narrow.
+    The last ``wrapping`` columns wrap when the terminal is narrow. Where that is not enough each cell is a line of its own:
+    nothing is ever cut off.
     """
+    screen, rows = console(), list(rows)
+    if rows and indent + _needed(columns, rows, wrapping) > screen.width:
+        _show_upright(columns, rows, indent)
+        return
     from rich.padding import Padding
     from rich.table import Table
 
-    grid = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style=STRONG)
+    grid = Table(box=None, pad_edge=False, padding=(0, _GAP, 0, 0), header_style=STRONG)
     for index, heading in enumerate(columns):
         side: Literal["left", "right"] = "right" if heading.startswith(">") else "left"
-        grid.add_column(heading.removeprefix(">"), justify=side, no_wrap=index < len(columns) - wrapping)
+        kept = index < len(columns) - wrapping
+        grid.add_column(heading.removeprefix(">"), justify=side, no_wrap=kept, overflow="fold")
     for row in rows:
         grid.add_row(*row)
-    screen = console()
     with screen.capture() as drawn:
         screen.print(Padding(grid, (0, 0, 0, indent), expand=False))
     for line in drawn.get().splitlines():
         click.echo(line.rstrip())
+
+
+def _needed(columns: Sequence[str], rows: Sequence[Sequence[str]], wrapping: int) -> int:
+    """The least width at which no number is broken and text can be read."""
+    cells = [
+        [heading.removeprefix(">"), *column] for heading, column in zip(columns, zip(*rows, strict=True), strict=True)
+    ]
+    fixed = len(columns) - wrapping
+    widths = [max(map(len, column)) for column in cells[:fixed]] + [_least(column) for column in cells[fixed:]]
+    return sum(widths) + _GAP * (len(widths) - 1)
+
+
+def _least(column: Sequence[str]) -> int:
+    natural, word = max(map(len, column)), max(len(word) for cell in column for word in [*cell.split(), ""])
+    return min(natural, _LEAST) if natural > 2 * _LEAST else min(word, 2 * _LEAST)
+
+
+def _show_upright(columns: Sequence[str], rows: Sequence[Sequence[str]], indent: int) -> None:
+    headings = [heading.removeprefix(">") for heading in columns]
+    widest = max(map(len, headings))
+    for number, row in enumerate(rows):
+        if number:
+            say()
+        for heading, cell in zip(headings, row, strict=True):
+            if cell:
+                say((f"{heading:<{widest}}  ", STRONG), cell, indent=indent)

@@ -128,9 +128,9 @@ class Client(Questions):
 
     # Who has the trap, and whether the schedule rests
 
-    def claim(self, why: str, until: Time | None = None) -> Json:
+    def claim(self, why: str, until: Time | None = None, *, interrupt: bool = False) -> Json:
         """Keep the trap for yourself: others need ``interrupt``, the schedule waits. ``until`` None: no end."""
-        return self._post("/v1/claim", given({"why": why, "until": rfc3339(until)}))
+        return self._post("/v1/claim", given({"why": why, "until": rfc3339(until), "interrupt": interrupt or None}))
 
     def release(self, why: str = "", *, interrupt: bool = False) -> Json:
         """End a claim; somebody else's only with ``interrupt``."""

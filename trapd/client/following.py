@@ -84,9 +84,10 @@ def _or_lost(entries: Iterator[JsonEntry | None], request: int) -> Iterator[Json
     try:
         yield from entries
     except DaemonUnreachable as error:
+        cause = error.message.removesuffix("; nothing was sent")
         raise DaemonUnreachable(
             f"the daemon stopped answering while request {request} was under way; every output holds where it was, and "
-            f"`trapd record` tells how far it came ({error})",
+            f"`trapd record` tells how far it came ({cause})",
             {"request": request},
         ) from error
 

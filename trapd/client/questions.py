@@ -134,7 +134,23 @@ class Questions:
 
     def scans(self) -> list[Json]:
         """The scans of the trap file, each with its newest finding."""
-        found: list[Json] = self._get("/v1/scans")["scans"]
+        found: list[Json] = self._get("/v1/scans", limit=1)["scans"]
+        return found
+
+    def scans_made(
+        self,
+        *,
+        after: int | None = None,
+        limit: int = 100,
+        scan: str | None = None,
+        state: str | None = None,
+        who: str | None = None,
+        since: Time | None = None,
+        until: Time | None = None,
+    ) -> list[Json]:
+        """Every scan that began, named by the entry of its request, and how it ended; in order as with `entries`."""
+        asked = {"after": after, "limit": limit, "scan": scan, "state": state, "who": who}
+        found: list[Json] = self._get("/v1/scans", **asked, **_times(since, until))["made"]
         return found
 
     def scan_at(self, request: int) -> Json:

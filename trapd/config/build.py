@@ -100,7 +100,7 @@ def _tickle(config: Config, scales: Mapping[str, Scale]) -> TickleLimits | None:
         return TickleLimits(level_max_v=config.tickle.level_max_v)
     return TickleLimits(
         level_max_v=min(config.tickle.level_max_v, level.high),
-        level_resolution_v=level.resolution,
+        frequency_resolution_hz=frequency.resolution,
         frequency_hz=(frequency.low, frequency.high),
         burst_s=None if burst is None else (burst.low, burst.high),
     )

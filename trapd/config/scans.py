@@ -14,6 +14,9 @@ from trapd.config.table import Table
 _MODES: tuple[ScanMode, ...] = get_args(ScanMode)
 _SHORTEST_DWELL_S, _LONGEST_DWELL_S = 1e-3, 10.0
 _FEWEST_PASSES, _MOST_PASSES = 2, 1000
+_MOST_POINTS = 20_000
+"""Of a whole scan: what is reckoned after each pass grows with them."""
+
 _WIDTHS_IN_SPAN = 2.0
 """A search must show the line's two flanks."""
 
@@ -57,7 +60,7 @@ def read_scans(root: Table, catalogue: Collection[str], tickle: TickleSection | 
 def _read_scan(name: str, table: Table, catalogue: Collection[str], tickle: TickleSection | None) -> ScanSection:
     width_hz = table.quantity("width", "frequency", default=ScanSection.width_hz, above=0.0)
     passes = f"a whole number from {_FEWEST_PASSES} to {_MOST_PASSES}"
-    return ScanSection(
+    scan = ScanSection(
         name=name,
         mode=table.choice("mode", _MODES) or "x",
         species=_species(table, catalogue),
@@ -71,6 +74,14 @@ def _read_scan(name: str, table: Table, catalogue: Collection[str], tickle: Tick
         min_contrast=_share(table, "min_contrast", ScanSection.min_contrast),
         model_uncertainty=_share(table, "model_uncertainty", ScanSection.model_uncertainty),
     )
+    return _bounded(scan, table)
+
+
+def _bounded(scan: ScanSection, table: Table) -> ScanSection:
+    points = 2 * scan.span_hz / scan.width_hz * scan.passes if scan.width_hz > 0 else 0.0
+    if points > _MOST_POINTS:
+        table.wrong("passes", f"fewer: {points:.0f} points, two a width over the whole span; at most {_MOST_POINTS}")
+    return scan
 
 
 def _species(table: Table, catalogue: Collection[str]) -> str | None:

@@ -8,10 +8,11 @@ from dataclasses import asdict, dataclass, field
 
 from trapd.controller.activity import Activity
 from trapd.controller.desk import Desk
-from trapd.controller.drafts import DAEMON, contents_draft
+from trapd.controller.drafts import DAEMON, contents_draft, result_draft
 from trapd.controller.looking import look
 from trapd.controller.off import silencing
 from trapd.controller.situation import Claim, Measured, SchedulePause
+from trapd.errors import Superseded
 from trapd.record import Draft
 from trapd.setpoint import Contents, Values
 
@@ -63,6 +64,12 @@ def adopting(remembered: Remembered) -> Callable[[Desk], Activity]:
             for s in surveys
         ]
         drafts.append(Draft(kind="found", actor=DAEMON, data=found))
+        if remembered.open_scan is not None:
+            cut_off = Superseded("the daemon ended while it ran")
+            here = situation.values
+            drafts.append(result_draft(DAEMON, remembered.open_scan, here, here, returns=False, error=cut_off))
+            words = f"the last run ended in the middle of a scan (entry {remembered.open_scan})"
+            desk.change(doubt=(*desk.situation.doubt, words))
         drafts.append(contents_draft(situation.contents, DAEMON, "after a start"))
         yield desk.note(*drafts)
         yield from silencing(desk, DAEMON, "after a start")

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from math import ceil
+
 from trapd.config.records import CounterSection, ScanSection
 from trapd.controller.activity import Part
 from trapd.controller.counting import Counted, count
@@ -15,8 +17,9 @@ from trapd.scans.plan import Plan, plan_scan
 from trapd.scans.prediction import predictions
 from trapd.setpoint import Contents, Values, Verdict
 
-FIRST_SHOTS = 3
-"""Counts with the tickle off before anything is emitted: somebody must be home."""
+LEAST_SHOTS, LEAST_COUNTS = 3, 30
+"""Counts with the tickle off before anything is emitted (somebody must be home), and whenever they fall under the floor:
+so many, and so long that the floor itself would give this many photons."""
 
 
 def section_of(desk: Desk, name: str | None) -> tuple[ScanSection, CounterSection]:
@@ -60,10 +63,20 @@ def require_ready(desk: Desk) -> None:
             raise InstrumentUnreachable(f"scan: {name} does not answer ({why}); nothing was sent")
     if desk.wiring.tickle in situation.off_pending:
         raise Conflict(f"scan: {desk.wiring.tickle} is not confirmed off yet; nothing was sent")
+    if situation.tickling:
+        raise Conflict(
+            "scan: the tickle's output is on, and no scan switched it on; `trapd stop` switches it off; nothing was sent"
+        )
 
 
 def judge_scan(
-    model: GuardModel, section: ScanSection, species: str, contents: Contents, values: Values, counter: CounterSection
+    model: GuardModel,
+    section: ScanSection,
+    species: str,
+    level_v: float,
+    contents: Contents,
+    values: Values,
+    counter: CounterSection,
 ) -> tuple[Verdict, Plan | None]:
     """The plan where the mode is expected at ``values``, and the verdict on it. Without a plan the state is refused;
     `Conflict` where it is not, but a part of the band in which the amplitude may stand holds nothing."""
@@ -78,14 +91,19 @@ def judge_scan(
             )
         return verdict, None
     others = [one for one in modes if one is not here]
-    plan = plan_scan(section, here, others, model.tickle, counter.floor_per_s)
+    plan = plan_scan(section, here, others, model.tickle, level_v, counter.floor_per_s)
     return judge_tickle(model, contents, values, plan.envelope), plan
+
+
+def enough_shots(plan: Plan) -> int:
+    """How many counts tell the floor from nobody."""
+    return max(LEAST_SHOTS, ceil(LEAST_COUNTS / (plan.floor_per_s * plan.dwell_s)))
 
 
 def first_shots(desk: Desk, plan: Plan) -> Part:
     """Counts with the tickle off, enough of them: they are the first points of the scan."""
     shots: list[Counted] = []
-    for _ in range(FIRST_SHOTS):
+    for _ in range(enough_shots(plan)):
         counted = yield from count(desk, plan.dwell_s)
         shots.append(counted)
     if rate_of(shots) < plan.floor_per_s:

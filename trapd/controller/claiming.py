@@ -6,12 +6,16 @@ from collections.abc import Callable, Mapping
 from dataclasses import asdict
 from typing import Any
 
-from trapd.controller.activity import Activity
+from trapd.controller.activity import Activity, Pause
 from trapd.controller.desk import Desk
+from trapd.controller.precedence import claimed_by_another, paused
 from trapd.controller.situation import Claim, SchedulePause
 from trapd.controller.ticket import Ticket
 from trapd.errors import BadRequest, Conflict
 from trapd.record import Draft
+from trapd.setpoint import Request
+
+_SOON_S = 0.005
 
 
 def claiming(desk: Desk, ticket: Ticket) -> Activity:
@@ -19,10 +23,18 @@ def claiming(desk: Desk, ticket: Ticket) -> Activity:
     request = ticket.request
     _require_why(ticket)
     _require_future(desk, ticket)
-    data = {"state": "claimed", "who": request.author, "why": request.why, "until_us": request.until_us}
-    entry = (yield desk.record.append(Draft(kind="claim", actor=request.author, data=data)))[0].seq
-    claim = Claim(entry=entry, who=request.author, why=request.why, until_us=request.until_us)
-    desk.change(claim=claim)
+    while desk.claiming:  # two at once: the second one is held to what the first became
+        yield Pause(_SOON_S)
+    refusal = claimed_by_another(desk.situation.claim, request)
+    if refusal is not None:
+        raise refusal
+    desk.claiming = True
+    try:
+        data = {"state": "claimed", "who": request.author, "why": request.why, "until_us": request.until_us}
+        entry = (yield desk.record.append(Draft(kind="claim", actor=request.author, data=data)))[0].seq
+    finally:
+        desk.claiming = False
+    desk.change(claim=Claim(entry=entry, who=request.author, why=request.why, until_us=request.until_us))
     return _answer(desk, entry)
 
 
@@ -80,6 +92,15 @@ def drop_what_is_over(desk: Desk) -> None:
         desk.change(claim=None)
     if situation.pause is not None and situation.pause.until_us < now_us:
         desk.change(pause=None)
+
+
+def require_allowed(desk: Desk, request: Request) -> None:
+    """`Conflict` under somebody else's claim, and for the schedule in a pause."""
+    drop_what_is_over(desk)
+    situation = desk.situation
+    refusal = claimed_by_another(situation.claim, request) or paused(situation.pause, request)
+    if refusal is not None:
+        raise refusal
 
 
 def _end_claim(desk: Desk, author: str, state: str, why: str) -> Activity:

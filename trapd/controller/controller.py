@@ -12,19 +12,20 @@ from dataclasses import replace
 from typing import Any
 
 from trapd.controller.activity import Activity
-from trapd.controller.claiming import IMMEDIATE, drop_what_is_over, revoking
+from trapd.controller.claiming import IMMEDIATE, drop_what_is_over, require_allowed, revoking
 from trapd.controller.desk import RETRY_S, Desk
 from trapd.controller.drafts import DAEMON, unregistered_drafts
 from trapd.controller.kinds import ACTIVITIES
 from trapd.controller.looking import looking, no_longer_known
 from trapd.controller.mailbox import Mailbox, Urgency
-from trapd.controller.off import retrying_off, switching_off
-from trapd.controller.precedence import claimed_by_another, gives_way, stands_in_the_way
+from trapd.controller.off import retrying_off, silencing, switching_off
+from trapd.controller.precedence import gives_way, require_free, require_known
 from trapd.controller.running import Running
 from trapd.controller.situation import Situation
 from trapd.controller.ticket import Ticket
-from trapd.controller.waiting import MOST_WAITING, Waiting
-from trapd.errors import QueueFull, Superseded, TrapdError
+from trapd.controller.timers import Timers
+from trapd.controller.waiting import Waiting
+from trapd.errors import Superseded, TrapdError
 from trapd.record import Draft
 from trapd.setpoint import Request
 
@@ -53,7 +54,7 @@ class Controller:
         self._current_request: Request | None = None
         self._running: dict[int, Running] = {}
         self._numbers = itertools.count()
-        self._due: list[tuple[int, Callable[[], None]]] = []
+        self._timers = Timers(desk.clock)
         self._ending = False
         self._retrying_off = False
         self._next_off_ns = 0
@@ -99,7 +100,7 @@ class Controller:
 
     def _run(self) -> None:
         while not (self._ending and not self._running):
-            letter = self._mailbox.take(self._patience_s())
+            letter = self._mailbox.take(self._timers.patience_s(TICK_S))
             try:
                 if letter is not None:
                     letter.act()
@@ -118,17 +119,9 @@ class Controller:
         for drafts in self._desk.unwritten:
             _log.error("never written: %s", drafts)
 
-    def _patience_s(self) -> float:
-        if not self._due:
-            return TICK_S
-        until_ns = min(when for when, _ in self._due) - self._desk.clock.monotonic_ns()
-        return min(TICK_S, max(0.0, until_ns / 1e9))
-
     def _do_what_is_due(self) -> None:
         now_ns = self._desk.clock.monotonic_ns()
-        ready = [act for when, act in self._due if when <= now_ns]
-        self._due = [(when, act) for when, act in self._due if when > now_ns]
-        for act in ready:
+        for act in self._timers.take_ready():
             self._do(act)
         if self._desk.situation.contents.presence == "loading" and now_ns >= (self._desk.loading_until_ns or now_ns):
             no_longer_known(self._desk, "loading was not concluded in time")
@@ -137,6 +130,7 @@ class Controller:
         if self._desk.unwritten and self._desk.retry_due_ns <= now_ns:
             self._desk.retry_due_ns = now_ns + int(RETRY_S * 1e9)
             self._desk.retry_unwritten()
+        drop_what_is_over(self._desk)
         if now_ns >= self._next_off_ns and self._offs == 0:
             self._retry_off()
         idle = self._current is None and self._offs == 0 and not self._ending and self._adopted
@@ -186,47 +180,62 @@ class Controller:
     def _stop(self, ticket: Ticket) -> None:
         situation, busy, request = self._desk.situation, self._current is not None, ticket.request
         under_way = situation.moving or situation.scanning
-        self._supersede("a stop came first")
+        if situation.tickling and not situation.scanning:
+            self._spawn(silencing(self._desk, request.author, request.why), to_the_end=True)
+        self._supersede(f"{request.author} said stop")
         data = {"why": request.why, "request": under_way and under_way.request}
         self._desk.note(Draft(kind="halt", actor=request.author, data=data))
         ticket.finish({"stopped": busy, "values": dict(self._desk.situation.values)})
 
     def _request(self, ticket: Ticket) -> None:
         request, running = ticket.request, self._current_request
-        drop_what_is_over(self._desk)
-        refusal = claimed_by_another(self._desk.situation.claim, request)
-        if self._ending:
-            self._fail(ticket, Superseded("the daemon is stopping; nothing was sent"))
-        elif refusal is not None:
-            self._fail(ticket, refusal)
-        elif request.kind in IMMEDIATE:
-            activity = IMMEDIATE[request.kind](self._desk, ticket)
-            self._begin(activity, ticket.finish, lambda error: self._fail(ticket, error))
-        elif (refusal := stands_in_the_way(running, request)) is not None:
-            self._fail(ticket, refusal)
-        elif self._waiting.is_full:
-            self._fail(ticket, QueueFull(f"{MOST_WAITING} requests wait already; nothing was sent"))
-        else:
+        try:
+            self._require_allowed(request)
+            require_known(self._desk.config, request)
+            if request.kind in IMMEDIATE:
+                activity = IMMEDIATE[request.kind](self._desk, ticket)
+                self._begin(activity, ticket.finish, lambda error: self._fail(ticket, error))
+                return
+            require_free(running, request)
             self._waiting.add(ticket)
-            if self._current is not None and gives_way(running, request):
-                self._current.throw(Superseded(f"{request.author} asked for something else; the scan ended there"))
-            self._next()
+        except TrapdError as error:
+            self._fail(ticket, error)
+            return
+        if self._current is not None and gives_way(running, request):
+            self._current.throw(Superseded(f"{request.author} asked for something else; the scan ended there"))
+        self._next()
+
+    def _require_allowed(self, request: Request) -> None:
+        """Asked on arrival, and again when its turn comes."""
+        if self._ending:
+            raise Superseded("the daemon is stopping; nothing was sent")
+        require_allowed(self._desk, request)
 
     def _withdraw(self, ticket: Ticket) -> None:
         if self._waiting.remove(ticket):
             self._fail(ticket, Superseded("whoever asked went away before its turn; nothing was sent"))
 
     def _next(self) -> None:
-        if self._current is None and self._offs == 0 and self._desk.contents_open == 0 and self._waiting:
+        while self._current is None and self._offs == 0 and self._desk.contents_open == 0 and len(self._waiting):
             ticket = self._waiting.next()
-            self._current_request = ticket.request
-            activity = ACTIVITIES[ticket.request.kind](self._desk, ticket)
-            # The slot is taken before the first step: an activity may end at once and ask for the next.
-            self._current = running = self._new(activity, ticket.finish, lambda error: self._fail(ticket, error))
-            running.resume(None)
+            try:
+                self._require_allowed(ticket.request)
+            except TrapdError as error:
+                self._fail(ticket, error)
+                continue
+            self._start(ticket)
+
+    def _start(self, ticket: Ticket) -> None:
+        activity = ACTIVITIES[ticket.request.kind](self._desk, ticket)
+        # The slot is taken before the first step: an activity may end at once and ask for the next.
+        self._current_request = ticket.request
+        self._current = running = self._new(activity, ticket.finish, lambda error: self._fail(ticket, error))
+        running.resume(None)
 
     def _fail(self, ticket: Ticket, error: TrapdError) -> None:
         """Answer with the error. What never came as far as a verdict is written down here."""
+        if ticket.answered_later:
+            return
         if not ticket.registered and not ticket.recorded.done():
             self._desk.note(*unregistered_drafts(ticket.request, self._desk.situation.values, error))
         ticket.fail(error)
@@ -259,7 +268,7 @@ class Controller:
         self._begin(activity, lambda _: None, lambda _: None, to_the_end=to_the_end)
 
     def schedule(self, seconds: float, act: Callable[[], None]) -> None:
-        self._due.append((self._desk.clock.monotonic_ns() + int(seconds * 1e9), act))
+        self._timers.add(seconds, act)
 
     def _begin(
         self,

@@ -17,7 +17,7 @@ POLL_S = 0.002
 @dataclass(frozen=True, kw_only=True)
 class Counted:
     """``frequency_hz`` of the tickle, None when it was off. ``at_us`` (UTC) and ``at_ns`` (monotonic): the middle of the
-    dwell. By ``over_ns`` (monotonic) the count had ended."""
+    dwell. By ``over_ns`` (monotonic) the count had ended: it was there."""
 
     frequency_hz: float | None
     dwell_s: float
@@ -64,5 +64,5 @@ def count(desk: Desk, dwell_s: float, frequency_hz: float | None = None) -> Part
         counts=counts,
         at_us=now_us + int(dwell_s / 2 * 1e6),
         at_ns=now_ns + int(dwell_s / 2 * 1e9),
-        over_ns=now_ns + int(dwell_s * 1e9),
+        over_ns=desk.clock.monotonic_ns(),
     )

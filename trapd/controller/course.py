@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+from concurrent.futures import Future
 from dataclasses import dataclass, field
 
 import numpy as np
 
+from trapd.controller.carry_out import Carried
 from trapd.controller.counting import Counted
 from trapd.controller.desk import Desk
 from trapd.controller.registering import Origin
-from trapd.controller.situation import Scanning
+from trapd.controller.situation import Scanning, Situation
 from trapd.record import Draft
 from trapd.scans.plan import Plan
 from trapd.scans.points import Points
@@ -19,19 +21,23 @@ from trapd.setpoint import Due
 @dataclass
 class Course:
     """``began_ns``: the middle of the first count, from which the points' times run. ``happened``: drafts for the next
-    commit. ``intent``: the last burst's. ``scares``: how often counts under the floor came back."""
+    commit. ``intent``, ``job``, ``burst_ns`` (monotonic): the last burst's. ``looked_ns``: when the instruments were
+    last looked at, and found as in ``judged``."""
 
     desk: Desk
     origin: Origin
     plan: Plan
     due: Due | None
     tickle: str
+    judged: Situation
     began_us: int
     began_ns: int
     pass_number: int = 1
     point: int = 0
     intent: int = 0
-    scares: int = 0
+    job: Future[Carried] | None = None
+    burst_ns: int = 0
+    looked_ns: int = 0
     counted: list[Counted] = field(default_factory=list)
     happened: list[Draft] = field(default_factory=list)
 

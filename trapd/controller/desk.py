@@ -15,7 +15,7 @@ from trapd.config.records import Config
 from trapd.controller.activity import Activity, Part, Pause
 from trapd.controller.situation import Situation
 from trapd.controller.survey import Survey
-from trapd.errors import BadRequest, NotFound, RecordFailed, RecordUnwritable, TrapdError
+from trapd.errors import BadRequest, NotFound, RecordFailed, RecordUnwritable, Superseded, TrapdError
 from trapd.guard.model import GuardModel
 from trapd.guard.verdict import judge, judge_move
 from trapd.record import Draft, Entry
@@ -47,8 +47,9 @@ class Desk:
     """Owned by the controller's thread; nobody else changes it. ``situation`` may be read from anywhere.
 
     ``events``: surveys that found something an instrument tells only once, until a look has dealt with them.
-    ``contents_open``: commits under way that say what is in the trap.
-    ``sent`` counts the commands handed to instruments: what was read before the last of them is stale. Before
+    ``contents_open``: commits under way that say what is in the trap; ``claiming``: one that says who claims it.
+    ``judges``: one verdict at a time, nobody waits long; ``estimates``: what a scan has found, which may take longer.
+    ``sent`` counts the commands handed to each instrument: what was read of it before the last of them is stale. Before
     ``rest_until_ns`` (monotonic) the last step has not settled, and no other setpoint may move.
     """
 
@@ -59,9 +60,11 @@ class Desk:
     record: Journal
     clock: Clock
     judges: Executor
+    estimates: Executor
     situation: Situation
     spawn: Spawn = field(init=False)
-    sent: int = 0
+    sent: dict[str, int] = field(init=False)
+    claiming: bool = False
     rest_until_ns: int = 0
     loading_until_ns: int | None = None
     contents_open: int = 0
@@ -73,6 +76,7 @@ class Desk:
 
     def __post_init__(self) -> None:
         self.scales = self.wiring.scales
+        self.sent = dict.fromkeys(self.workers, 0)
 
     def refit(self) -> None:
         """An instrument that was absent at the start has told its limits meanwhile."""
@@ -86,7 +90,7 @@ class Desk:
 
     def submit(self, instrument: str, job: Callable[[Instrument], Any], *, urgent: bool = False) -> Future[Any]:
         """Hand a job that commands something to the instrument's own thread."""
-        self.sent += 1
+        self.sent[instrument] += 1
         return self.workers[instrument].submit(job, urgent=urgent)
 
     def rest(self, seconds: float, since_ns: int) -> None:
@@ -126,7 +130,7 @@ class Desk:
         for future in self.retry_unwritten():
             try:
                 yield future
-            except RecordFailed:
+            except (RecordFailed, Superseded):
                 raise
             except TrapdError:  # it was dropped, and logged; that is no reason to refuse this request
                 continue
@@ -135,6 +139,22 @@ class Desk:
         future = self.record.append(*drafts)
         future.add_done_callback(lambda done: self._keep(done, drafts, happened_us))
         return future
+
+    def to_its_end(self, activity: Activity) -> Part:
+        """Wait for an activity that nothing cuts short. Whoever waits may be superseded; the activity goes on."""
+        ended: Future[dict[str, Any]] = Future()
+
+        def whole() -> Activity:
+            try:
+                answer = yield from activity
+            except Exception as error:
+                ended.set_exception(error)
+                raise
+            ended.set_result(answer)
+            return answer
+
+        self.spawn(whole(), to_the_end=True)
+        return (yield ended)
 
     def point(self, name: str | None) -> Mapping[str, float]:
         """A named operating point; the first of the file when no name is given."""

@@ -29,32 +29,33 @@ def look(desk: Desk, *, added: bool = False) -> Part:
     With ``added`` what is in doubt already stays in doubt: nobody has asked for anything since.
 
     Returns the surveys. Instruments that do not answer keep their last known values and are named in the situation. If a
-    command was handed to any instrument meanwhile, what was read is stale and nothing is taken from it.
+    command was handed to an instrument meanwhile, what was read of it is stale and nothing is taken from that.
     """
-    sent = desk.sent
+    sent = dict(desk.sent)
     jobs = {name: worker.submit(survey_job(desk.wiring, name)) for name, worker in desk.workers.items()}
     for job in jobs.values():
         job.add_done_callback(lambda done: _keep_events(desk, done))
     surveys: list[Survey] = yield from _gather(desk, jobs)
     desk.refit()
     before = desk.situation
-    words = differences(desk.wiring, desk.model, surveys, before.values, before.outputs)
+    fresh = [found for found in surveys if desk.sent[found.instrument] == sent[found.instrument]]
+    words = differences(desk.wiring, desk.model, fresh, before.values, before.outputs)
     events = [desk.events.popleft() for _ in range(len(desk.events))]
     words += [one for found in events if found not in surveys for one in reports(found)]
-    if desk.sent == sent:
+    if fresh or not surveys:
         outputs = dict(before.outputs)
-        for found in surveys:
+        for found in fresh:
             outputs.update(found.outputs)
-        tickling = next((found.tickling for found in surveys if found.tickling is not None), desk.situation.tickling)
+        tickling = next((found.tickling for found in fresh if found.tickling is not None), desk.situation.tickling)
         kept = desk.situation.doubt if added else ()
         doubt = tuple(dict.fromkeys((*kept, *words)))
-        desk.change(values=_merged(desk, surveys), outputs=outputs, tickling=tickling, doubt=doubt)
+        desk.change(values=_merged(desk, fresh), outputs=outputs, tickling=tickling, doubt=doubt)
     elif not events:
         return surveys
     if words and words != desk.last_words:
         desk.note(_found_draft(desk, surveys, words))
     desk.last_words = words
-    if any(found.power_on for found in events):
+    if any(found.power_on and found.instrument in desk.wiring.holding for found in events):
         no_longer_known(desk, "an instrument was switched off and on")
     follow_darkness(desk)
     return surveys
@@ -95,13 +96,14 @@ def follow_darkness(desk: Desk) -> None:
 
 def darkness(desk: Desk) -> Activity:
     """RF verified off for `DARK_S`: nothing can be in the trap, and the daemon says so."""
-    sent = desk.sent
+    drive = desk.wiring.drive
+    sent = desk.sent[drive]
     yield Pause(DARK_S)
-    if (yield from verified_dark(desk)) and desk.sent == sent and desk.situation.contents.presence != "none":
+    if (yield from verified_dark(desk)) and desk.sent[drive] == sent and desk.situation.contents.presence != "none":
         nobody = Contents(presence="none")
         desk.change(contents=nobody)
         desk.note(contents_draft(nobody, DAEMON, f"RF verified off for {DARK_S:g} s"))
-    elif desk.sent != sent:
+    elif desk.sent[drive] != sent:
         follow_darkness(desk)
     return {}
 

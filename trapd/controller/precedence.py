@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
-from trapd.controller.situation import Claim
-from trapd.errors import Conflict
+from trapd.config.build import setpoints_of
+from trapd.config.records import Config
+from trapd.controller.situation import Claim, SchedulePause
+from trapd.errors import BadRequest, Conflict, NotFound
 from trapd.setpoint import Request
 
 _OVER_CLAIMS = ("claim", "set", "go", "back", "on", "empty", "ions", "scan")
@@ -19,6 +21,24 @@ def claimed_by_another(claim: Claim | None, request: Request) -> Conflict | None
     )
 
 
+def paused(pause: SchedulePause | None, request: Request) -> Conflict | None:
+    """Why what the schedule asks may not begin, if so."""
+    if pause is None or request.due is None:
+        return None
+    return Conflict(f"{request.kind}: {pause.who} paused the schedule ({pause.why}); nothing was sent")
+
+
+def require_known(config: Config, request: Request) -> None:
+    """`NotFound` or `BadRequest` for a name that is none: what cannot be stops nothing that runs."""
+    unknown = [name for name in request.values if name not in setpoints_of(config)]
+    if unknown:
+        raise BadRequest(f"no setpoint {unknown[0]!r}; there are: {', '.join(setpoints_of(config))}; nothing was sent")
+    for what, name, known in (("point", request.point, config.points), ("scan", request.scan, config.scans)):
+        if name is not None and name not in known:
+            there_are = f"there are: {', '.join(known)}" if known else "there is none"
+            raise NotFound(f"no {what} {name!r} in the trap file; {there_are}; nothing was sent")
+
+
 def gives_way(running: Request | None, request: Request) -> bool:
     """Whether the scan that runs ends for ``request``: one of the schedule for a person, one of a person for themselves."""
     if running is None or running.kind != "scan" or request.due is not None:
@@ -26,11 +46,11 @@ def gives_way(running: Request | None, request: Request) -> bool:
     return running.due is not None or request.interrupt or running.author == request.author
 
 
-def stands_in_the_way(running: Request | None, request: Request) -> Conflict | None:
-    """Another person's scan is not stopped by accident. (A due run just waits its turn.)"""
+def require_free(running: Request | None, request: Request) -> None:
+    """`Conflict`: another person's scan is not stopped by accident. (A due run just waits its turn.)"""
     if running is None or running.kind != "scan" or request.due is not None or gives_way(running, request):
-        return None
-    return Conflict(
+        return
+    raise Conflict(
         f"{request.kind}: {running.author} is scanning {running.scan} ({running.why or 'no reason given'}); "
         "--interrupt stops that; nothing was sent"
     )

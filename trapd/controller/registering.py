@@ -86,7 +86,7 @@ def commit(desk: Desk, ticket: Ticket, drafts: list[Draft]) -> Part:
     try:
         return (yield future)
     except Superseded as error:
-        ticket.registered = True
+        ticket.registered = ticket.answered_later = True
         desk.spawn(_never_begun(desk, ticket, future, error), to_the_end=True)
         raise
 
@@ -99,6 +99,7 @@ def _never_begun(desk: Desk, ticket: Ticket, future: Future[tuple[Entry, ...]], 
         desk.note(*unregistered_drafts(ticket.request, here, error))
     else:
         desk.note(result_draft(ticket.request.author, entries[0].seq, here, here, returns=False, error=error))
+    ticket.fail(error)
     return {}
 
 

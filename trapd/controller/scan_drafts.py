@@ -25,7 +25,13 @@ def due_run_draft(due: Due, now_us: int) -> Draft:
     """A due run that begins, for the commit in which its request is the first draft."""
     late_s = (now_us - due.due_us) / 1e6
     state = "late" if late_s > LATE_S else "run"
-    data = {**asdict(due), "state": state, "late_s": late_s, "request": SameCommit(0), "reason": ""}
+    data = {
+        **asdict(due),
+        "state": state,
+        "late_s": late_s,
+        "request": SameCommit(0),
+        "reason": "it waited its turn" if state == "late" else "",
+    }
     return Draft(kind="due_run", actor="trapd", data=data)
 
 

@@ -8,7 +8,7 @@ from typing import Any
 
 from trapd.controller.activity import Activity, Part, Pause
 from trapd.controller.aiming import (
-    FIRST_SHOTS,
+    enough_shots,
     first_shots,
     judge_scan,
     rate_of,
@@ -30,6 +30,9 @@ from trapd.errors import Conflict, TrapdError
 from trapd.record import Draft
 from trapd.scans.estimate import Finding, estimate, is_enough
 
+LOOK_S = 10.0
+"""How old a look at the instruments may be while a scan goes on."""
+
 RECOOL_S = (0.2, 1.0)
 """How long the tickle stays off before each check of counts that fell under the floor."""
 
@@ -41,12 +44,21 @@ class _VanishedError(Exception):
 def scanning(desk: Desk, ticket: Ticket) -> Activity:
     """The activity behind `trapd scan` and behind every due run."""
     section, counter = section_of(desk, ticket.request.scan)
+    yield from desk.wait_until_rested()
     yield from look(desk)
+    looked_ns = desk.clock.monotonic_ns()
     species = require_held(desk, section)
     require_ready(desk)
     situation = desk.situation
     verdict, plan = yield desk.judges.submit(
-        judge_scan, desk.model, section, species, situation.contents, situation.values, counter
+        judge_scan,
+        desk.model,
+        section,
+        species,
+        desk.wiring.tickle_level_v(section.tickle_v),
+        situation.contents,
+        situation.values,
+        counter,
     )
     if plan is None or not verdict.accepted:
         origin = yield from enter(desk, ticket, verdict, None, {})
@@ -63,6 +75,8 @@ def scanning(desk: Desk, ticket: Ticket) -> Activity:
         plan=plan,
         due=due,
         tickle=desk.wiring.tickle,
+        judged=situation,
+        looked_ns=looked_ns,
         began_us=first[0].at_us,
         began_ns=first[0].at_ns,
     )
@@ -75,32 +89,49 @@ def _measuring(course: Course) -> Part:
     """However it ends, the tickle is off afterwards and what was counted is written down."""
     try:
         finding = yield from _all_passes(course)
-        finding = yield from _conclusion(course, finding)
     except BaseException as error:
-        if course.happened:
-            course.desk.note(*course.take_happened())
-        ends = silencing(course.desk, course.origin.author, f"the scan ended: {error}", course.origin.request)
-        course.desk.spawn(ends, to_the_end=True)
+        _abandon(course, error)
         raise
+    return (yield from course.desk.to_its_end(_ending(course, finding)))
+
+
+def _abandon(course: Course, error: BaseException) -> None:
+    """A burst that its instrument has not begun yet must not begin after the tickle was told off; and nothing else moves
+    before the last one has surely ended, whether or not its instrument still answers."""
+    desk = course.desk
+    if course.job is not None:
+        course.job.cancel()
+        desk.rest(course.plan.burst_s, course.burst_ns)
+    if course.happened:
+        desk.note(*course.take_happened())
+    ends = silencing(desk, course.origin.author, f"the scan ended: {error}", course.origin.request)
+    desk.spawn(ends, to_the_end=True)
+
+
+def _ending(course: Course, finding: Finding) -> Activity:
     yield from silencing(course.desk, course.origin.author, "the scan is over", course.origin.request)
-    return {"finding": finding}
+    told = yield from _conclusion(course, finding)
+    return {"finding": told}
 
 
 def _all_passes(course: Course) -> Part:
-    plan = course.plan
+    plan, desk = course.plan, course.desk
     try:
         for number in range(1, plan.passes + 1):
             course.pass_number, course.point = number, course.point if number == 1 else 0
             yield from _one_pass(course)
-            finding = yield course.desk.judges.submit(estimate, course.points(), plan.question)
+            yield from _require_unchanged(course)
+            finding = yield desk.estimates.submit(estimate, course.points(), plan.question)
             finding = _flagged(course, finding)
+            if finding.state == "vanished":
+                yield from _confirm(course)
+                return replace(_vanished(course, finding), state="unclear", message="The counts vanished for a while.")
             if number == plan.passes or _is_over(course) or is_enough(finding, plan.question, number):
                 return finding
-            estimated = estimate_draft(course.origin, number, len(course.counted), finding)
-            yield from _write(course, estimated)
-            yield from _require_unchanged(course)
+            yield from _write(course, estimate_draft(course.origin, number, len(course.counted), finding))
     except _VanishedError:
-        finding = yield course.desk.judges.submit(estimate, course.points(), plan.question)
+        yield from look(desk)  # RF may be off; whatever it is, it is known then
+        finding = yield desk.estimates.submit(estimate, course.points(), plan.question)
         return _vanished(course, finding)
 
 
@@ -109,12 +140,15 @@ def _one_pass(course: Course) -> Part:
         course.tell()
         if _is_over(course):
             return
+        if course.desk.clock.monotonic_ns() - course.looked_ns > LOOK_S * 1e9:
+            yield from _require_unchanged(course)
         if frequency_hz is None:
             counted = yield from count(course.desk, course.plan.dwell_s)
         else:
             counted = yield from tickled_point(course, frequency_hz)
         course.keep(counted)
-        if counted.rate_per_s < course.plan.floor_per_s:
+        latest = course.counted[-enough_shots(course.plan) :]
+        if counted.rate_per_s < course.plan.floor_per_s and rate_of(latest) < course.plan.floor_per_s:
             yield from _confirm(course)
 
 
@@ -124,12 +158,11 @@ def _confirm(course: Course) -> Part:
     for recool_s in RECOOL_S:
         yield Pause(recool_s)
         shots = []
-        for _ in range(FIRST_SHOTS):
+        for _ in range(enough_shots(course.plan)):
             counted = yield from count(course.desk, course.plan.dwell_s)
             course.keep(counted)
             shots.append(counted)
         if rate_of(shots) >= course.plan.floor_per_s:
-            course.scares += 1
             return
     raise _VanishedError
 
@@ -194,16 +227,15 @@ def _flagged(course: Course, finding: Finding) -> Finding:
 
 
 def _vanished(course: Course, finding: Finding) -> Finding:
-    if finding.state == "vanished":
-        return finding
-    return replace(
-        finding,
+    """Without a number, whatever was seen before: who relies on it would rely on a scan that lost its ion."""
+    floor_per_s = course.plan.floor_per_s
+    known = finding.message if finding.state == "vanished" else "The counts vanished."
+    return Finding(
         state="vanished",
-        frequency_hz=None,
-        uncertainty_hz=None,
-        flags=tuple(dict.fromkeys((*finding.flags, "counts_vanished"))),
-        message=f"counts fell under the floor of {course.plan.floor_per_s:g} /s and did not come back with the tickle off: "
-        "the ion may be dark, hot or lost; the outputs hold",
+        flags=("counts_vanished",),
+        message=f"{known} They stayed under {floor_per_s:g} /s with the tickle off: the ion may be dark, hot or lost. The "
+        "outputs hold.",
+        rate_per_s=finding.rate_per_s,
     )
 
 
@@ -217,14 +249,18 @@ def _is_over(course: Course) -> bool:
 
 
 def _require_unchanged(course: Course) -> Part:
-    """Between passes the instruments are looked at, as they are while nothing moves."""
-    before = course.desk.situation
+    """The instruments are looked at as they are while nothing moves: what was judged must still stand."""
+    judged = course.judged
     yield from look(course.desk)
-    after = course.desk.situation
-    if (
-        after.unreachable.keys() != before.unreachable.keys()
-        or after.doubt != before.doubt
-        or after.contents != before.contents
-    ):
-        words = "; ".join((*after.doubt, *(f"{k}: {v}" for k, v in after.unreachable.items()))) or "the contents"
-        raise Conflict(f"scan {course.plan.scan}: something changed meanwhile ({words}); the scan ends here")
+    course.looked_ns = course.desk.clock.monotonic_ns()
+    now = course.desk.situation
+    changed = [name for name, value in now.values.items() if value != judged.values.get(name)]
+    changed += [name for name, on in now.outputs.items() if on != judged.outputs.get(name)]
+    changed += [name for name in now.unreachable if name not in judged.unreachable]
+    changed += ["contents"] if now.contents != judged.contents else []
+    changed += ["tickle.output"] if now.tickling else []
+    if changed:
+        words = "; ".join(now.doubt) or "somebody has changed it"
+        raise Conflict(
+            f"scan {course.plan.scan}: {', '.join(changed)}: no longer as judged ({words}); the scan ends here"
+        )

@@ -14,13 +14,15 @@ from trapd.setpoint import Request
 class Ticket:
     """``recorded`` is answered when request and verdict are durable, ``done`` at the end.
 
-    ``registered``: the request has an entry, or will have one; nobody writes it down a second time.
+    ``registered``: the request has an entry, or will have one; nobody writes it down a second time. ``answered_later``: it
+    ended while that entry was being written; whoever asked is told when it is known whether it stands.
     """
 
     request: Request
     recorded: Future[dict[str, Any]] = field(default_factory=Future)
     done: Future[dict[str, Any]] = field(default_factory=Future)
     registered: bool = False
+    answered_later: bool = False
 
     def __post_init__(self) -> None:
         # Whoever asked may go away; that cancels nothing here.

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from concurrent.futures import Future
+from math import isclose
 
 from trapd.clock import Clock
 from trapd.controller.activity import Activity, Part, Within
@@ -37,7 +38,8 @@ def tickled_point(course: Course, frequency_hz: float) -> Part:
 
 
 def _try(course: Course, frequency_hz: float) -> Part:
-    """None when the count may have gone on longer than the burst: it was of half a tickle, and is not used."""
+    """None when the count may have gone on longer than the burst, or the burst was over when it ended: a count of half a
+    tickle is not used."""
     desk, plan = course.desk, course.plan
     scales = desk.wiring.scales
     frequency_hz = scales[TICKLE_FREQUENCY].quantise(frequency_hz)
@@ -55,12 +57,14 @@ def _try(course: Course, frequency_hz: float) -> Part:
     draft = course.origin.intent(intent, course.point, **more)
     course.intent = yield from commit_next(desk, course.origin, course.take_happened(), draft)
     job = _burst(intent, plan, scales[TICKLE_FREQUENCY], scales[TICKLE_LEVEL], desk.clock)
-    carried: Carried = yield from _carry(course, desk.submit(course.tickle, job))
+    course.burst_ns = desk.clock.monotonic_ns()
+    course.job = desk.submit(course.tickle, job)
+    carried: Carried = yield from _carry(course, course.job)
     course.happened.append(outcome_draft(course.origin.author, course.intent, carried.outcome))
     _require_begun(course.tickle, carried.outcome)
     counted: Counted = yield from count(desk, plan.dwell_s, frequency_hz)
-    yield from _silence(course)
-    return counted if counted.over_ns <= carried.at_ns + int(plan.burst_s * 1e9) else None
+    lasted: bool = yield from _silence(course)
+    return counted if lasted and counted.over_ns <= carried.at_ns + int(plan.burst_s * 1e9) else None
 
 
 def _require_within(envelope: Envelope, intent: Intent, burst_s: float) -> None:
@@ -78,6 +82,9 @@ def _burst(intent: Intent, plan: Plan, frequency: Scale, level: Scale, clock: Cl
         assert isinstance(instrument, RfSource)
         sent_us, at_ns = clock.now_us(), clock.monotonic_ns()
         try:
+            if instrument.read_output():  # nothing is changed under a sine that somebody else switched on
+                error = "its output is on, and no scan switched it on; no burst was started"
+                return Carried(outcome=Outcome(state="not confirmed", sent_us=sent_us, error=error), at_ns=at_ns)
             instrument.set_frequency_hz(intent.value)
             if not _agrees(level, instrument.read_level_v(), intent.level):
                 instrument.set_level_v(intent.level)
@@ -104,7 +111,7 @@ def _burst(intent: Intent, plan: Plan, frequency: Scale, level: Scale, clock: Cl
 
 def _agrees(scale: Scale, found: float, wanted: float) -> bool:
     """The programmed value, not a measured one: it must be the very step that was asked for."""
-    return abs(found - wanted) <= 0.51 * scale.resolution
+    return isclose(scale.quantise(found), scale.quantise(wanted), rel_tol=1e-9, abs_tol=1e-12)
 
 
 def _differs(intent: Intent, found_hz: float, found_v: float, sent_us: int) -> Outcome:
@@ -145,13 +152,16 @@ def _require_begun(tickle: str, outcome: Outcome) -> None:
 
 
 def _silence(course: Course) -> Part:
-    """Off as soon as the count is there. The burst would end by itself a little later; the ion cools meanwhile."""
+    """Off as soon as the count is there, and whether the burst lasted until then. It would end by itself a little later; the
+    ion cools meanwhile."""
 
-    def job(instrument: Instrument) -> None:
+    def job(instrument: Instrument) -> bool:
         assert isinstance(instrument, RfSource)
+        lasted = instrument.read_burst() and instrument.read_output()
         instrument.set_output(False)
+        return lasted
 
     try:
-        yield Within(course.desk.submit(course.tickle, job), ANSWER_S)
+        return (yield Within(course.desk.submit(course.tickle, job), ANSWER_S))
     except (DriverError, TimeoutError) as error:
         raise InstrumentUnreachable(f"{course.tickle}: {error or 'no answer'}; its burst ends by itself") from error

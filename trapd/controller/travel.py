@@ -108,7 +108,7 @@ def _send(desk: Desk, origin: Origin, command: Command, intent: int) -> Part:
     # Until the instrument has it nobody knows when it settles; a later `rest` can only extend this.
     desk.rest(max(command.wait_s, command.settle_s), desk.clock.monotonic_ns())
     job: Future[Carried] = desk.submit(instrument, carry_out(command, desk.clock, live=live))
-    sent = desk.sent
+    sent = desk.sent[instrument]
     try:
         carried: Carried = yield job
     except Superseded as error:
@@ -127,7 +127,7 @@ def _late_outcome(
     except Superseded:  # the job was taken out of the instrument's queue before it began
         desk.note(outcome_draft(origin.author, intent, Outcome(state="not sent", error=why)))
         return {}
-    if desk.sent == sent:  # else something was sent after it, `off` perhaps
+    if desk.sent[command.intent.instrument] == sent:  # else something was sent after it, `off` perhaps
         _take(desk, command, carried)
     if carried.outcome.state not in ARRIVED:
         desk.change(doubt=(*desk.situation.doubt, f"{command.intent.setpoint}: {carried.outcome.error}"))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from trapd.controller.ticket import Ticket
+from trapd.errors import QueueFull
 
 MOST_WAITING = 16
 """Requests that may wait behind the one in progress; one more is answered 429."""
@@ -18,11 +19,10 @@ class Waiting:
     def __len__(self) -> int:
         return len(self._people) + len(self._due)
 
-    @property
-    def is_full(self) -> bool:
-        return len(self) >= MOST_WAITING
-
     def add(self, ticket: Ticket) -> None:
+        """Raises `QueueFull`."""
+        if len(self) >= MOST_WAITING:
+            raise QueueFull(f"{MOST_WAITING} requests wait already; nothing was sent")
         (self._people if ticket.request.due is None else self._due).append(ticket)
 
     def next(self) -> Ticket:

@@ -33,12 +33,12 @@ class Limit:
 
 @dataclass(frozen=True, kw_only=True)
 class TickleLimits:
-    """What the tickle may be told: levels (V, zero to peak, at the generator) up to ``level_max_v`` in steps of
-    ``level_resolution_v`` (0: unknown), frequencies and burst times within the generator's ranges. ``burst_s`` None: it
-    cannot do bursts, or nobody knows yet."""
+    """What the tickle may be told: levels (V, zero to peak, at the generator) up to ``level_max_v``, frequencies (in steps of
+    ``frequency_resolution_hz``) and burst times within the generator's ranges. ``burst_s`` None: it cannot do bursts, or
+    nobody knows yet."""
 
     level_max_v: float
-    level_resolution_v: float = 0.0
+    frequency_resolution_hz: float = 1.0
     frequency_hz: tuple[float, float] = (0.0, math.inf)
     burst_s: tuple[float, float] | None = None
 

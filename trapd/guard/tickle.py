@@ -33,14 +33,16 @@ def tickle_reasons(model: GuardModel, values: Values, envelope: Envelope) -> lis
 def _level(limits: TickleLimits, envelope: Envelope) -> Reason | None:
     if 0.0 < envelope.level_v <= limits.level_max_v * (1 + _ROUNDING):
         return None
+    message = f"the tickle's level {envelope.level_v:.4g} V is over {limits.level_max_v:.4g} V"
+    if envelope.level_v <= 0.0:
+        message = "the tickle is weaker than the least step of its generator: it would be none at all"
     return Reason(
         rule=rules.TICKLE_LEVEL,
         quantity=TICKLE,
         unit="V",
         found=envelope.level_v,
         bound=limits.level_max_v,
-        nearest=limits.level_max_v or None,
-        message=f"the tickle's level {envelope.level_v:.4g} V is not between 0 and {limits.level_max_v:.4g} V",
+        message=message,
     )
 
 

@@ -5,7 +5,7 @@ copies it out. The only package that imports SQLAlchemy.
 """
 
 from trapd.record.ask import Commanded, Reader, Refusal, State
-from trapd.record.ask_scans import DueRun, EndedScan, ScanPoint, SecularFrequency
+from trapd.record.ask_scans import DueRun, MadeScan, ScanPoint, SecularFrequency
 from trapd.record.entry import KINDS, NO_DIGEST, Draft, Entry, Head, SameCommit, rfc3339
 from trapd.record.export import EXPORTED, FORMATS, export
 from trapd.record.verify import Problem, Report, verify
@@ -19,9 +19,9 @@ __all__ = [
     "Commanded",
     "Draft",
     "DueRun",
-    "EndedScan",
     "Entry",
     "Head",
+    "MadeScan",
     "Problem",
     "Reader",
     "Record",

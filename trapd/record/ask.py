@@ -50,7 +50,8 @@ class Commanded:
 
 @dataclass(frozen=True, kw_only=True)
 class Refusal:
-    """One rule that failed in a verdict that was not accepted: a row of the view `refusals`."""
+    """One rule that failed in a verdict that was not accepted; or, with the rule "conflict" and without numbers, why a
+    request did not come as far as one: a row of the view `refusals`."""
 
     seq: int
     time_us: int
@@ -58,8 +59,8 @@ class Refusal:
     who: str
     why: str
     rule: str
-    quantity: str
-    unit: str
+    quantity: str | None
+    unit: str | None
     found: float | None
     bound: float | None
     nearest: float | None
@@ -144,7 +145,7 @@ class Reader(ScanQuestions):
         until_us: int | None = None,
         newest: bool = False,
     ) -> tuple[Refusal, ...]:
-        """One for each rule that failed, in order of the verdicts' seq."""
+        """One for each rule that failed, in order of the seq of what said so."""
         query = select(*(refusals.c[name] for name in Refusal.__dataclass_fields__)).where(refusals.c.seq > after)
         query = between(matching(query, refusals, who=who), refusals.c.time_us, since_us, until_us)
         return tuple(Refusal(**row._mapping) for row in self.page(query, refusals, limit, newest))

@@ -61,16 +61,19 @@ class SecularFrequency:
 
 
 @dataclass(frozen=True, kw_only=True)
-class EndedScan:
-    """How a scan ended: a row of the view `scans`. What the entry does not say is None; ``flags`` as above."""
+class MadeScan:
+    """A scan that began, named by the entry of its request, and how it ended: a row of the view `scans`.
+
+    ``state`` is that of its ``finding`` ("found", "none", ...); without one "stopped" or "failed"; "unknown" while it
+    runs, and for good where it was cut off. What nobody said is None; ``flags`` as above.
+    """
 
     seq: int
     time_us: int
-    request: int | None
     scan: str | None
     mode: str | None
     species: str | None
-    state: str | None
+    state: str
     frequency_hz: float | None
     uncertainty_hz: float | None
     predicted_hz: float | None
@@ -79,6 +82,7 @@ class EndedScan:
     flags: str
     who: str
     why: str
+    finding: int | None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -123,7 +127,7 @@ class ScanQuestions(OpenRecord):
         query = between(query, secular_frequencies.c.at_us, since_us, until_us)
         return self._rows_of(SecularFrequency, query, secular_frequencies, after, limit, newest)
 
-    def findings(
+    def scans(
         self,
         *,
         after: int = 0,
@@ -134,11 +138,11 @@ class ScanQuestions(OpenRecord):
         since_us: int | None = None,
         until_us: int | None = None,
         newest: bool = False,
-    ) -> tuple[EndedScan, ...]:
-        """As `secular_frequencies`, and those that found none as well; times are those of the entries."""
-        query = matching(_of(EndedScan, scans), scans, scan=scan, state=state, who=who)
+    ) -> tuple[MadeScan, ...]:
+        """As `secular_frequencies`, every scan that began; times are those of the requests."""
+        query = matching(_of(MadeScan, scans), scans, scan=scan, state=state, who=who)
         query = between(query, scans.c.time_us, since_us, until_us)
-        return self._rows_of(EndedScan, query, scans, after, limit, newest)
+        return self._rows_of(MadeScan, query, scans, after, limit, newest)
 
     def due_runs(
         self,

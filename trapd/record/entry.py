@@ -40,7 +40,7 @@ KINDS = (
     "plan",  # how a scan that was asked for will go about it
     "scan_point",  # what was counted at one frequency of a scan; typed table `scan_points`
     "estimate",  # what a scan makes of its points so far, after each pass
-    "finding",  # how a scan ended; view `scans`
+    "finding",  # what a scan found; view `scans`
     "secular_frequency",  # the frequency of a finding that found one; typed table `secular_frequencies`
     "due_run",  # what became of a time at which a scan was due; typed table `due_runs`
     "claim",  # somebody takes the trap for themselves, or gives it back

@@ -129,7 +129,7 @@ requests = Table(
     "requests",
     views,
     Column("seq", Integer, primary_key=True),
-    *_texts("time", "who", "kind", "point", "values", "why"),
+    *_texts("time", "who", "kind", "point", "scan", "values", "why"),
     *_integers("verdict", "accepted", "time_us"),
 )
 
@@ -137,12 +137,10 @@ scans = Table(
     "scans",
     views,
     Column("seq", Integer, primary_key=True),
-    Column("time", Text),
-    Column("request", Integer),
-    *_texts("scan", "mode", "species", "state"),
+    *_texts("time", "scan", "mode", "species", "state"),
     *_reals("frequency_hz", "uncertainty_hz", "predicted_hz", "min_contrast"),
     *_texts("message", "flags", "who", "why"),
-    Column("time_us", Integer),
+    *_integers("finding", "time_us"),
 )
 
 frequencies = Table(

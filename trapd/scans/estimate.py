@@ -27,9 +27,10 @@ _BLENDED = 14.0  # where the line is too wide already: one in 1,000 by chance at
 _NO_NUMBER, _EDGE = 0.25, 1.0  # widths inside the window
 _BROADENED, _NARROWED = 1.5, 0.6  # of the expected width
 _REFUSED = 2.0  # dispersion
-_DEEP = 0.2  # contrast
+_DEEP = 0.5  # contrast
 _DRIFTING = 0.01  # rms of the fitted drift
 _FEWEST_POINTS = 12
+_FEWEST_PASSES = 3  # one that stops earlier stops more often on a lucky line
 _NEAR_LOSS = 1.5  # widths
 
 
@@ -46,7 +47,7 @@ def estimate(points: Points, question: Question) -> Finding:
 
 def is_enough(finding: Finding, question: Question, passes: int) -> bool:
     """Whether a scan may stop after this pass, without stopping on a lucky one."""
-    if passes < 2 or finding.state in ("unclear", "vanished"):
+    if passes < _FEWEST_PASSES or finding.state in ("unclear", "vanished"):
         return finding.state == "vanished"
     if finding.state == "none":
         return finding.contrast_limit is not None and finding.contrast_limit < question.min_contrast

@@ -20,7 +20,7 @@ FLAGS: Mapping[str, str] = MappingProxyType(
         " power and lock.",
         "counts_vanished": "The counts fell to about the dark rate. Count with the tickle off, cool again, and only then"
         " call the ion lost.",
-        "deep": "The dip takes more than 20 percent of the counts: the tickle may be too strong, which shifts and distorts"
+        "deep": "The dip takes more than half of the counts: the tickle may be too strong, which shifts and distorts"
         " the line. Scan with half the tickle and compare.",
         "not_excluded": "A line of the least contrast asked for could still hide in the counts. Scan longer.",
         "identity_ambiguous": "Another mode is expected close enough to be the one that answered. Scan that one too, or move"

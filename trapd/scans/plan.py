@@ -42,6 +42,7 @@ class Plan:
     low_hz: float
     high_hz: float
     step_hz: float
+    resolution_hz: float
     points: int
     passes: int
     level_v: float
@@ -87,7 +88,8 @@ class Plan:
         """
         random = np.random.default_rng([seed, number])
         grid = self.low_hz + (np.arange(self.points) + random.random()) * self.step_hz
-        frequencies: list[float | None] = np.round(random.permutation(grid)).tolist()
+        told = np.clip(np.round(grid / self.resolution_hz) * self.resolution_hz, self.low_hz, self.high_hz)
+        frequencies: list[float | None] = random.permutation(told).tolist()
         for shot in reversed(range(ceil(self.points / SHOT_EVERY))):
             frequencies.insert(shot * SHOT_EVERY, None)
         return tuple(frequencies)
@@ -106,13 +108,16 @@ def plan_scan(
     prediction: Prediction,
     others: Sequence[Prediction],
     limits: TickleLimits,
+    level_v: float,
     floor_per_s: float,
 ) -> Plan:
-    """The plan of ``section`` where its mode is expected at ``prediction``. The level is rounded down to what the
-    generator can give; the window is what the prediction leaves open, no wider than the section's span."""
+    """The plan of ``section`` where its mode is expected at ``prediction``. ``level_v`` is what the generator will really
+    give; the window is what the prediction leaves open, no wider than the section's span, on frequencies it can give."""
     half_hz = max(WIDE_SD * prediction.uncertainty_hz, LEAST_WIDTHS / 2 * section.width_hz)
     half_hz = min(half_hz, section.span_hz / 2)
-    low_hz, high_hz = floor(prediction.frequency_hz - half_hz), ceil(prediction.frequency_hz + half_hz)
+    step = limits.frequency_resolution_hz
+    low_hz = ceil((prediction.frequency_hz - half_hz) / step) * step
+    high_hz = floor((prediction.frequency_hz + half_hz) / step) * step
     points = ceil((high_hz - low_hz) / (section.width_hz / 2))
     return Plan(
         scan=section.name,
@@ -121,9 +126,10 @@ def plan_scan(
         low_hz=low_hz,
         high_hz=high_hz,
         step_hz=(high_hz - low_hz) / points,
+        resolution_hz=step,
         points=points,
         passes=section.passes,
-        level_v=_rounded_down(section.tickle_v, limits.level_resolution_v),
+        level_v=level_v,
         dwell_s=section.dwell_s,
         burst_s=section.dwell_s + BURST_SLACK_S,
         longest_s=section.passes * points * (section.dwell_s + _OVERHEAD_S),
@@ -136,7 +142,3 @@ def plan_scan(
         method=section.method,
         others=tuple(others),
     )
-
-
-def _rounded_down(level_v: float, resolution_v: float) -> float:
-    return floor(level_v / resolution_v + 1e-6) * resolution_v if resolution_v > 0 else level_v

@@ -19,6 +19,7 @@ from trapd.scans.points import Array, Points
 _WIDTH_RATIO = 1.5  # of neighbouring widths of the search
 _STEPS_A_WIDTH = 3
 _FREE = 3.0  # widths, factors of e, contrast: so far the fit's own line may move as if it were free
+_BLOCK = 4_000_000  # numbers in the largest array
 _USUAL_CONTRAST = 1.0  # spread of the prior, dips and rises
 
 
@@ -67,6 +68,23 @@ def try_instead(points: Points, wander: Wander, fit: Fit, lines: Cells) -> Trial
 
 
 def _try(points: Points, wander: Wander, fit: Fit, start: Array, lines: Cells, own: Array) -> Trial:
+    """In blocks: lines times points may be more than a machine holds."""
+    size = max(1, _BLOCK // len(points))
+    parts = [
+        _try_block(points, wander, fit, start, Cells(frequency_hz=frequency_hz, width_hz=width_hz), own)
+        for frequency_hz, width_hz in zip(
+            *(np.split(one, range(size, len(one), size)) for one in (lines.frequency_hz, lines.width_hz)), strict=True
+        )
+    ]
+    return Trial(
+        **{
+            name: np.concatenate([getattr(part, name) for part in parts])
+            for name in ("contrast", "information", "gain")
+        }
+    )
+
+
+def _try_block(points: Points, wander: Wander, fit: Fit, start: Array, lines: Cells, own: Array) -> Trial:
     basis = np.hstack([own, wander.basis(fit.size)])
     excess = points.counts - start
     pull = basis.T @ excess - np.concatenate([np.zeros(own.shape[1]), fit.waves])
