@@ -145,7 +145,7 @@ MUTATIONS = (
     Mutation(
         name="a scan stops on one lucky pass",
         file="trapd/scans/estimate.py",
-        old="if passes < 2 or",
+        old="if passes < _FEWEST_PASSES or",
         new="if passes < 1 or",
         caught_by=("tests/scans/test_estimate.py",),
     ),
