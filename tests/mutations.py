@@ -75,7 +75,7 @@ MUTATIONS = (
         file="trapd/controller/controller.py",
         old='        self._supersede("off came first")\n',
         new="""        if self._current is not None:
-            self.schedule(0.01, lambda: self._off(ticket))
+            self._stage.schedule(0.01, lambda: self._off(ticket))
             return
         self._supersede("off came first")
 """,
@@ -207,5 +207,19 @@ MUTATIONS = (
         old="if pause is not None and now_us < pause.until_us:",
         new="if pause is not None and now_us > pause.until_us:",
         caught_by=("tests/schedule/test_hindered.py",),
+    ),
+    Mutation(
+        name="a trip ends by itself",
+        file="trapd/guard/interlock.py",
+        old="tripped=state.tripped or _long_enough(",
+        new="tripped=_long_enough(",
+        caught_by=("tests/guard/test_interlock.py",),
+    ),
+    Mutation(
+        name="a gauge that cannot be read trips",
+        file="trapd/guard/interlock.py",
+        old="return replace(state, unreadable=_unreadable(limits, state, now_s))",
+        new="return replace(state, unreadable=_unreadable(limits, state, now_s), tripped=True)",
+        caught_by=("tests/guard/test_interlock.py",),
     ),
 )

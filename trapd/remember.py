@@ -41,6 +41,7 @@ def remember(reader: Reader) -> Remembered:
         claim=_claim(reader),
         pause=_pause(reader),
         measured=_measured(reader),
+        tripped=_tripped(reader),
     )
 
 
@@ -98,3 +99,10 @@ def _measured(reader: Reader) -> dict[str, Measured]:
                 **{name: data[name] for name in _MEASURED},
             )
     return found
+
+
+def _tripped(reader: Reader) -> tuple[str, ...]:
+    """Interlocks that tripped and were not cleared since."""
+    entries = reader.entries(kind="interlock", limit=_MANY, newest=True)
+    newest = {entry.data["name"]: entry.data["tripped"] for entry in entries}
+    return tuple(name for name, tripped in newest.items() if tripped)

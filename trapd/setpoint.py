@@ -24,7 +24,20 @@ Presence = Literal["held", "unknown", "none", "loading"]
 """What is known of the trap's contents: see `Contents`."""
 
 RequestKind = Literal[
-    "set", "go", "back", "ions", "on", "empty", "off", "stop", "scan", "claim", "release", "pause", "resume"
+    "set",
+    "go",
+    "back",
+    "ions",
+    "on",
+    "empty",
+    "off",
+    "stop",
+    "scan",
+    "claim",
+    "release",
+    "pause",
+    "resume",
+    "clear",
 ]
 TICKLE = "tickle"
 """Name under which a tickle's bursts stand among the intents; its output is ``tickle.output``."""
@@ -66,9 +79,10 @@ class Due:
 
 @dataclass(frozen=True, kw_only=True)
 class Request:
-    """What somebody asked for. ``values`` only for ``set``; ``point`` for ``go``, ``on`` and ``empty``; ``scan`` names the
-    scan; ``until_us`` ends a claim or a pause. ``due``: it comes from the schedule, not from a person. ``interrupt``: it
-    stops what runs for somebody else, and goes over somebody else's claim.
+    """What somebody asked for. ``values`` only for ``set``; ``point`` for ``go``, ``on`` and ``empty``; ``scan`` names
+    the scan, ``interlock`` the interlock that is cleared; ``until_us`` ends a claim or a pause. ``due``: it comes
+    from the schedule, not from a person. ``interrupt``: it stops what runs for somebody else, and goes over somebody
+    else's claim.
     """
 
     kind: RequestKind
@@ -79,6 +93,7 @@ class Request:
     contents: Contents | None = None
     stay_off: bool = False
     scan: str | None = None
+    interlock: str | None = None
     until_us: int | None = None
     interrupt: bool = False
     due: Due | None = None

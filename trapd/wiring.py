@@ -23,7 +23,7 @@ from trapd.setpoint import (
     Values,
     unit_of,
 )
-from trapd_drivers.interfaces import DcSupply, Instrument, PhotonCounter, RfSource, Scale
+from trapd_drivers.interfaces import DcSupply, Gauge, Instrument, PhotonCounter, RfSource, Scale
 
 DRIVE_OUTPUT = "drive.output"
 
@@ -70,6 +70,7 @@ class Wiring:
         self.counter = None if config.counter is None else config.counter.instrument
         self._scales = self._find_scales(config, instruments)
         self._tickle = self._find_tickle(config, instruments)
+        self.gauges = self._find_gauges(config, instruments)
 
     def _find_scales(self, config: Config, instruments: Mapping[str, Instrument]) -> dict[str, Callable[[], Scale]]:
         source = instruments[self.drive]
@@ -88,6 +89,12 @@ class Wiring:
                 )
             scales[name] = partial(supply.voltage, channel)
         return scales
+
+    def _find_gauges(self, config: Config, instruments: Mapping[str, Instrument]) -> dict[str, str]:
+        for name, section in config.interlocks.items():
+            if not isinstance(instruments[section.instrument], Gauge):
+                raise ConfigError(f"{config.source}: interlocks.{name}.instrument = {section.instrument!r} is no gauge")
+        return {name: section.instrument for name, section in config.interlocks.items()}
 
     def _find_tickle(self, config: Config, instruments: Mapping[str, Instrument]) -> RfSource | None:
         if self.counter is not None and not isinstance(instruments[self.counter], PhotonCounter):

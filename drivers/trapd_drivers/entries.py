@@ -44,6 +44,7 @@ def quantity(table: Table, units: tuple[str, ...], names: frozenset[str] = NO_CH
     )
     if isinstance(found.low, float) and isinstance(found.high, float) and found.low >= found.high:
         raise table.error("high", f"a number above low = {found.low:g}")
+    _demand_computable(table, found)
     return found
 
 
@@ -101,6 +102,17 @@ def _unit(table: Table, name: str) -> Unit:
         load_factor=table.number("load_factor", 1.0, above=0.0),
         impedance_ohm=table.number("impedance_ohm", 50.0, above=0.0),
     )
+
+
+def _demand_computable(table: Table, found: Quantity) -> None:
+    for key in ("low", "high", "resolution", "accuracy_absolute", "boundaries"):
+        said = getattr(found, key)
+        for number in said if isinstance(said, tuple) else (said,):
+            try:
+                if not isinstance(number, Form):
+                    found.unit.to_si(number)
+            except ValueError as error:
+                raise table.error(key, "what can be computed with") from error
 
 
 def _limit(table: Table, key: str, names: frozenset[str]) -> float | Form:

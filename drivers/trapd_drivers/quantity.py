@@ -49,9 +49,14 @@ class Unit:
         return next(si for si, units in _GAUGE_UNITS.items() if self.name in units)
 
     def to_si(self, number: float) -> float:
+        """Raises ValueError for what only infinity could hold, and for so few dBm that they would be 0 V."""
         if self.logarithmic:
-            return self.load_factor * math.sqrt(2.0 * self.impedance_ohm * 1e-3) * _ratio(number)
-        return self.load_factor * _SI_PER_UNIT[self.name] * number + _SI_AT_ZERO.get(self.name, 0.0)
+            value = self.load_factor * math.sqrt(2.0 * self.impedance_ohm * 1e-3) * _ratio(number)
+        else:
+            value = self.load_factor * _SI_PER_UNIT[self.name] * number + _SI_AT_ZERO.get(self.name, 0.0)
+        if not math.isfinite(value) or (self.logarithmic and value == 0.0):
+            raise ValueError(f"{number:g} {self.name} is beyond what can be computed with")
+        return value
 
     def from_si(self, value: float) -> float:
         """The number for ``value``; minus infinity for 0 V in dBm."""
@@ -145,4 +150,8 @@ class Quantity:
 
 
 def _ratio(decibel: float) -> float:
-    return math.pow(10.0, decibel / 20.0)
+    """Infinity for more than a number holds."""
+    try:
+        return math.pow(10.0, decibel / 20.0)
+    except OverflowError:
+        return math.inf

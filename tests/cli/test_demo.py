@@ -99,6 +99,6 @@ def test_the_demo_does_not_write_over_somebody_s_trap_file(tmp_path: Path) -> No
 
 def test_the_demo_s_folder_can_be_used_again(tmp_path: Path) -> None:
     folder = Folder.make(tmp_path / "demo")
-    folder.write_trap_file({"rf": 40001, "dc": 40002, "tickle": 40003, "counter": 40004})
+    folder.write_trap_file({"rf": 40001, "dc": 40002, "tickle": 40003, "counter": 40004, "vacuum": 40005})
     again = Folder.make(tmp_path / "demo")
     assert "::40002::" in again.trap_file.read_text()

@@ -81,7 +81,7 @@ MISTAKES: list[Mistake] = [
     (NORTH_BENCH, "[instruments.rf]", '[instruments."r f"]', ("instruments.r f", "letters, digits")),
     (NORTH_BENCH, "[points.work]", '[points."a=b"]', ("points.a=b", "letters, digits")),
     # later
-    (NORTH_BENCH, "[record]", "[interlocks.vacuum]\n[record]", ("interlocks: " + LATER,)),
+    (NORTH_BENCH, "[record]", "[interlocks.vacuum]\n[record]", ("interlocks.vacuum.action is missing", '"ramp down"')),
     (NORTH_BENCH, '"sine"', '"square"', ('drive.waveform = "square"', LATER)),
     (NORTH_BENCH, '"sine"', '"rotating"', ('drive.waveform = "rotating"', LATER)),
     (NORTH_BENCH, '"sine"', '"sin"', ('drive.waveform = "sin"', 'expected "sine"')),
@@ -92,6 +92,9 @@ MISTAKES: list[Mistake] = [
     (NORTH_BENCH, '"linear"', '"lineal"', ('trap.geometry = "lineal"', '"linear" or "ring" or "tensor"')),
     (NORTH_BENCH, 'r0 = "0.50 mm"', "", ("trap.r0 is missing", "a length")),
     (NORTH_BENCH, 'z0 = "2.5 mm"', "", ("trap.z0 is missing", "a length")),
+    (NORTH_BENCH, '"0.50 mm"', '"0 mm"', ('trap.r0 = "0 mm"', "from 1 um to 10 m")),
+    (NORTH_BENCH, '"0.50 mm"', '"0.50 nm"', ('trap.r0 = "0.50 nm"', "from 1 um to 10 m")),
+    (NORTH_BENCH, '"2.5 mm"', '"11 m"', ('trap.z0 = "11 m"', "from 1 um to 10 m")),
     (NORTH_BENCH, "kappa = 0.29", "", ("trap.kappa is missing", "a plain number")),
     (RING, 'r0 = "0.70 mm"', "", ("trap.r0 is missing", "a length")),
     (RING, 'z0 = "0.50 mm"', "kappa = 1.0", ("trap.z0 is missing", "a length")),

@@ -285,7 +285,7 @@ def test_off_does_not_wait_for_a_very_long_ramp_to_be_made(tmp_path: Path) -> No
         while time.monotonic() < until and not ticket.recorded.done():
             began = time.perf_counter()
             seen = threading.Event()
-            made.controller.post(seen.set)
+            made.controller._stage.post(seen.set)
             assert seen.wait(5.0)
             longest = max(longest, time.perf_counter() - began)
         assert made.ask("off")["off"] is True

@@ -152,6 +152,11 @@ class ScanBody(Body):
     interrupt: bool = False
 
 
+class ClearBody(Body):
+    interlock: Name
+    why: Why
+
+
 class ClaimBody(MoveBody):
     """``until``: no end when left out."""
 

@@ -8,7 +8,7 @@ from fastapi import APIRouter, Body
 
 from trapd.api.access import Operating
 from trapd.api.answers import Answer
-from trapd.api.bodies import ClaimBody, PauseBody, ReleaseBody, ResumeBody
+from trapd.api.bodies import ClaimBody, ClearBody, PauseBody, ReleaseBody, ResumeBody
 from trapd.api.moves import done
 from trapd.controller import Controller
 from trapd.setpoint import Request
@@ -24,6 +24,11 @@ def routes(controller: Controller) -> APIRouter:
     async def claim(body: ClaimBody, caller: Operating) -> Answer:
         claim = Request(kind="claim", author=caller.name, why=body.why, until_us=body.until, interrupt=body.interrupt)
         return await done(controller, claim)
+
+    @router.post("/v1/clear", summary="Clear an interlock that has tripped")
+    async def clear(body: ClearBody, caller: Operating) -> Answer:
+        cleared = Request(kind="clear", author=caller.name, why=body.why, interlock=body.interlock)
+        return await done(controller, cleared)
 
     @router.post("/v1/release", summary="End a claim")
     async def release(caller: Operating, body: Annotated[ReleaseBody, _RELEASE]) -> Answer:

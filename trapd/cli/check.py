@@ -52,6 +52,7 @@ def check_command(file: Path, instruments: bool) -> None:
         "counter": config.counter and asdict(config.counter),
         "scans": {name: asdict(one) for name, one in config.scans.items()},
         "schedule": [asdict(one) for one in config.schedule],
+        "interlocks": {name: asdict(one) for name, one in config.interlocks.items()},
         "record": str(config.record_file),
     }
     if instruments:
@@ -82,6 +83,7 @@ def _show(answer: Data) -> None:
         say()
         _show_point(name, verdict)
     _show_scans(answer)
+    _show_interlocks(answer)
     if "instruments" in answer:
         say()
         rows = [(name, one["resource"], *_answers(one)) for name, one in answer["instruments"].items()]
@@ -142,6 +144,19 @@ def _show_scans(answer: Data) -> None:
     if answer["schedule"]:
         say()
         table(("due", "scan", "cron (UTC)"), [(one["name"], one["scan"], one["cron"]) for one in answer["schedule"]])
+
+
+def _show_interlocks(answer: Data) -> None:
+    if answer["interlocks"]:
+        say()
+        levels = ("warn_below", "trip_below", "warn_above", "trip_above")
+        columns = ("interlock", "gauge", *(f">{one.replace('_', ' ')}" for one in levels), ">for", "action")
+        table(columns, [_interlock_row(one, levels) for one in answer["interlocks"].values()])
+
+
+def _interlock_row(one: Data, levels: tuple[str, ...]) -> tuple[str, ...]:
+    pressures = ("-" if one[level] is None else f"{one[level]:.3g} Pa" for level in levels)
+    return one["name"], one["instrument"], *pressures, duration(one["for_s"]), one["action"]
 
 
 def _scan_row(one: Data) -> tuple[str, ...]:

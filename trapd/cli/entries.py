@@ -8,6 +8,7 @@ from collections.abc import Callable, Mapping
 from trapd.cli.amounts import amount, duration, in_order, millivolts, value_of, with_uncertainty
 from trapd.cli.answer import Data
 from trapd.cli.finding import finding_words
+from trapd.cli.interlocks import interlock_words
 from trapd.cli.words import utc
 from trapd.setpoint import FREQUENCY
 
@@ -186,6 +187,7 @@ _SENTENCES: Mapping[str, Callable[[Data], str]] = {
     "secular_frequency": _secular_frequency,
     "due_run": _due_run,
     "claim": _claim,
+    "interlock": interlock_words,
     "pause": _claim,
     "token": _token,
     "alarm": _alarm,

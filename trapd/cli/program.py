@@ -35,7 +35,13 @@ COMMANDS: Mapping[str, Mapping[str, str]] = {
         "stop": "off",
         "off": "off",
     },
-    "Who comes first": {"claim": "claims", "release": "claims", "pause": "claims", "resume": "claims"},
+    "Who comes first": {
+        "claim": "claims",
+        "release": "claims",
+        "pause": "claims",
+        "resume": "claims",
+        "clear": "interlocks",
+    },
     "What was done": {"record": "record", "verify": "verify"},
     "People": {"token": "token"},
 }

@@ -9,6 +9,7 @@ from trapd.cli.answer import Data, tell, wants_json
 from trapd.cli.claims import claim_words, pause_words
 from trapd.cli.entries import contents_words
 from trapd.cli.finding import show_frequencies
+from trapd.cli.interlocks import interlock_lines
 from trapd.cli.options import at_option, command
 from trapd.cli.terminal import BAD, CAREFUL, FAINT, STRONG, say, table
 from trapd.cli.verdicts import show_reasons, show_species, show_warnings
@@ -93,6 +94,8 @@ def _show(status: Data, trap: Data, allowed: Data, tickle: str | None, now_us: i
     simulated = " (simulated)" if status["simulated"] else ""
     say((state_sentence(situation, tickle), STRONG), f"  {status['name']}{simulated}")
     _show_troubles(situation, verdict)
+    for line in interlock_lines(situation["interlocks"]):
+        say(*line)
     for line in plan_lines(situation, status["upcoming"], now_us):
         say(*line)
     say()

@@ -132,6 +132,10 @@ class Client(Questions):
         """Keep the trap for yourself: others need ``interrupt``, the schedule waits. ``until`` None: no end."""
         return self._post("/v1/claim", given({"why": why, "until": rfc3339(until), "interrupt": interrupt or None}))
 
+    def clear(self, interlock: str, why: str) -> Json:
+        """Clear an interlock that has tripped; `Conflict` while its gauge still reads beyond the level."""
+        return self._post("/v1/clear", {"interlock": interlock, "why": why})
+
     def release(self, why: str = "", *, interrupt: bool = False) -> Json:
         """End a claim; somebody else's only with ``interrupt``."""
         return self._post("/v1/release", {"why": why, "interrupt": interrupt})

@@ -9,8 +9,9 @@ from types import MappingProxyType
 from typing import TYPE_CHECKING, Literal, cast
 
 from trapd.config.points import sweeps_of
-from trapd.config.records import Config, ElectrodeSection, ResonatorSection, Sweep
+from trapd.config.records import Config, ElectrodeSection, InterlockSection, ResonatorSection, Sweep
 from trapd.errors import ConfigError
+from trapd.guard.interlock import InterlockLimits
 from trapd.guard.model import GuardModel, Limit, TickleLimits
 from trapd.physics import trap as traps
 from trapd.physics.resonator import Resonator
@@ -20,6 +21,7 @@ from trapd.setpoint import AMPLITUDE, TICKLE_BURST, TICKLE_FREQUENCY, TICKLE_LEV
 if TYPE_CHECKING:
     from trapd_drivers.interfaces import Scale
 
+INTERLOCK_UNIT = "Pa"
 _NO_SCALES: Mapping[str, Scale] = MappingProxyType({})
 
 
@@ -81,6 +83,12 @@ def guard_of(config: Config, scales: Mapping[str, Scale] = _NO_SCALES) -> GuardM
         min_depth_ev=config.guard.min_depth_ev,
         tickle=_tickle(config, scales),
     )
+
+
+def interlock_of(section: InterlockSection) -> InterlockLimits:
+    """Levels are pressures, in Pa."""
+    levels = {key: value for key, value in vars(section).items() if key != "instrument"}
+    return InterlockLimits(unit=INTERLOCK_UNIT, **levels)
 
 
 def setpoints_of(config: Config) -> dict[str, Sweep]:

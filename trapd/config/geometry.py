@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from math import nan
+
 from trapd.config.records import Geometry, Matrix, TrapSection
 from trapd.config.table import Table
 
 GEOMETRIES: tuple[Geometry, ...] = ("linear", "ring", "tensor")
+_SHORTEST_M, _LONGEST_M = 1e-6, 10.0
 _LAPLACE_TOLERANCE = 1e-6
 
 
@@ -19,13 +22,22 @@ def read_trap(table: Table) -> TrapSection | None:
         table.refuse(("r0", "z0", "kappa", "phases"), "tensor geometry takes [drive] curvature instead")
         return TrapSection(name=name, geometry=geometry, escape_m=_escape(table))
     table.refuse(("escape",), f"{geometry} geometry takes it from r0 and z0")
-    r0_m = table.quantity("r0", "length", above=0.0)
-    z0_m = table.quantity("z0", "length", above=0.0)
+    r0_m = _distance(table, "r0")
+    z0_m = _distance(table, "z0")
     if geometry == "ring":
         table.refuse(("kappa", "phases"), "only linear geometry has it")
         return TrapSection(name=name, geometry=geometry, r0_m=r0_m, z0_m=z0_m)
     kappa = table.number("kappa", above=0.0)
     return TrapSection(name=name, geometry=geometry, r0_m=r0_m, z0_m=z0_m, kappa=kappa, phases=_phases(table))
+
+
+def _distance(table: Table, key: str) -> float:
+    """Within bounds that every trap keeps by far, and whose squares are numbers."""
+    distance_m = table.quantity(key, "length")
+    if distance_m < _SHORTEST_M or distance_m > _LONGEST_M:
+        table.wrong(key, "a length from 1 um to 10 m")
+        return nan
+    return distance_m
 
 
 def _escape(table: Table) -> tuple[float, float, float] | None:

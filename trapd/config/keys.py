@@ -25,6 +25,18 @@ SECTIONS: Mapping[str, tuple[str, ...]] = {
     "electrodes": ("NAME",),
     "electrodes.NAME": ("kind", "instrument", "channel", "weight", "voltage", "lag", "curvature", "field"),
     "electrodes.NAME.voltage": ("min", "max", "slew", "step"),
+    "interlocks": ("NAME",),
+    "interlocks.NAME": (
+        "instrument",
+        "warn_above",
+        "trip_above",
+        "warn_below",
+        "trip_below",
+        "for",
+        "deadband",
+        "unreadable",
+        "action",
+    ),
     "instruments": ("NAME",),
     "instruments.NAME": ("driver", "resource", "profile", "timeout"),
     "guard": ("margin", "min_secular_frequency", "min_depth"),
@@ -55,7 +67,7 @@ TOP: tuple[str, ...] = tuple(dict.fromkeys(section.split(".")[0] for section in 
 """The keys of the file itself, whose section is ""."""
 
 LATER: Mapping[str, tuple[str, ...]] = {
-    "": ("interlocks", "purge", "crystal", "calibrations"),
+    "": ("purge", "crystal", "calibrations"),
     "drive": ("duty", "coupling", "harmonics"),
 }
 """Keys by section (top level: "") that are decided and not built yet in this version."""

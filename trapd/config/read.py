@@ -9,6 +9,7 @@ from trapd.config.catalogue import read_species
 from trapd.config.drive import read_drive
 from trapd.config.electrodes import read_electrodes
 from trapd.config.geometry import read_trap
+from trapd.config.interlocks import read_interlocks
 from trapd.config.points import read_points, sweeps_of
 from trapd.config.records import Config, TrapSection
 from trapd.config.scans import read_counter, read_scans, read_schedule, read_tickle
@@ -45,11 +46,13 @@ def parse(text: str, file: Path) -> Config:
     drive = read_drive(root.table("drive", "drive", "a table [drive]"), geometry)
     electrodes = read_electrodes(root.optional_table("electrodes"), geometry, mistakes)
     instruments = read_instruments(root.optional_table("instruments"), source, mistakes)
-    tickle, counter = read_tickle(root), read_counter(root)
+    tickle, counter, interlocks = read_tickle(root), read_counter(root), read_interlocks(root)
     if "instruments" in root and "drive" in root:
         alone = {"drive": drive, "tickle": tickle, "counter": counter}
         owners = {section: owner.instrument for section, owner in alone.items() if owner}
-        check_wiring(owners, electrodes.values(), instruments, mistakes)
+        check_wiring(
+            owners, electrodes.values(), instruments, mistakes, {one.instrument for one in interlocks.values()}
+        )
     scans = read_scans(root, species, tickle)
     config = Config(
         source=source,
@@ -68,6 +71,7 @@ def parse(text: str, file: Path) -> Config:
         counter=counter,
         scans=scans,
         schedule=read_schedule(root, scans),
+        interlocks=interlocks,
     )
     mistakes.raise_if_any()
     return config

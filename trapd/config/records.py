@@ -11,6 +11,7 @@ from trapd.physics.species import Species
 
 Geometry = Literal["linear", "ring", "tensor"]
 ElectrodeKind = Literal["endcap", "rods", "ring", "other"]
+InterlockAction = Literal["hold", "ramp down", "off"]
 ScanMode = Literal["x", "y", "z"]
 Matrix = tuple[tuple[float, float, float], tuple[float, float, float], tuple[float, float, float]]
 
@@ -156,6 +157,22 @@ class DueSection:
 
 
 @dataclass(frozen=True, kw_only=True)
+class InterlockSection:
+    """``[interlocks.NAME]``. Levels in Pa, None where there is none; see `trapd.guard.interlock.InterlockLimits`."""
+
+    name: str
+    instrument: str
+    action: InterlockAction
+    warn_above: float | None = None
+    trip_above: float | None = None
+    warn_below: float | None = None
+    trip_below: float | None = None
+    for_s: float = 0.0
+    deadband: float = 0.1
+    unreadable_s: float = 5.0
+
+
+@dataclass(frozen=True, kw_only=True)
 class ServerSection:
     """``[server]``. ``host``/``port`` of the TCP listener (port 0: any free one). ``socket``: path of the Unix socket, None
     for the usual one in the runtime directory."""
@@ -185,3 +202,4 @@ class Config:
     counter: CounterSection | None = None
     scans: Mapping[str, ScanSection] = field(default_factory=dict)
     schedule: tuple[DueSection, ...] = ()
+    interlocks: Mapping[str, InterlockSection] = field(default_factory=dict)

@@ -56,6 +56,7 @@ def check_wiring(
     electrodes: Iterable[ElectrodeSection],
     instruments: Iterable[str],
     mistakes: Mistakes,
+    gauges: Iterable[str] = (),
 ) -> None:
     """Notes instruments that are missing, idle or claimed twice. Only for a file that has instruments at all.
 
@@ -67,10 +68,12 @@ def check_wiring(
         _claim(section, instrument, _WHOLE, known, users, mistakes)
     for electrode in electrodes:
         _claim(f"electrodes.{electrode.name}", electrode.instrument, electrode.channel, known, users, mistakes)
+    for gauge in gauges:  # one gauge may have several interlocks
+        _claim(f"interlocks of {gauge}", gauge, _WHOLE, known, users, mistakes)
     used = {name for name, _ in users}
     for name in instruments:
         if name not in used and len(mistakes) == before:  # after a wrong name it would be told twice
-            users_are = "neither the drive, an electrode, [tickle] nor [counter]"
+            users_are = "neither the drive, an electrode, [tickle], [counter] nor an interlock"
             mistakes.note(f"instruments.{name}", f": {users_are} uses it; expected one that does")
 
 

@@ -30,7 +30,7 @@ class Mistakes:
 
     def note(self, key: str, text: str) -> None:
         """``text`` continues the sentence that begins with file and key."""
-        self._lines.append(f"{self._file}: {key}{text}")
+        self._lines.append(self._line(f"{key}{text}"))
 
     def __len__(self) -> int:
         return len(self._lines)
@@ -40,8 +40,13 @@ class Mistakes:
             return
         lines = self._lines[:_SHOWN]
         if len(self._lines) > _SHOWN:
-            lines.append(f"{self._file}: and {len(self._lines) - _SHOWN} more")
+            lines.append(self._line(f"and {len(self._lines) - _SHOWN} more"))
         raise ConfigError("\n".join(lines), {"file": str(self._file), "mistakes": self._lines})
+
+    def _line(self, text: str) -> str:
+        """One line whatever is quoted in it, with nothing that tells a terminal to do something."""
+        line = f"{self._file}: {text}"
+        return "".join(one if one.isprintable() else one.encode("unicode_escape").decode() for one in line)
 
 
 class Table:

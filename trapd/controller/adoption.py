@@ -13,6 +13,7 @@ from trapd.controller.looking import look
 from trapd.controller.off import silencing
 from trapd.controller.situation import Claim, Measured, SchedulePause
 from trapd.errors import Superseded
+from trapd.guard.interlock import InterlockState
 from trapd.record import Draft
 from trapd.setpoint import Contents, Values
 
@@ -21,8 +22,9 @@ from trapd.setpoint import Contents, Values
 class Remembered:
     """What the record of earlier runs says: the last commanded values and outputs, the contents, the state before.
 
-    ``open_intents``: intents without an outcome; nobody knows whether they were sent. ``open_scan``: the entry of a scan
-    that never ended. ``claim`` and ``pause`` as last declared, ``measured`` by scan name.
+    ``open_intents``: intents without an outcome; nobody knows whether they were sent. ``open_scan``: the entry of a
+    scan that never ended. ``tripped``: interlocks that nobody has cleared. ``claim`` and ``pause`` as last declared,
+    ``measured`` by scan name.
     """
 
     values: Values
@@ -34,6 +36,7 @@ class Remembered:
     claim: Claim | None = None
     pause: SchedulePause | None = None
     measured: Mapping[str, Measured] = field(default_factory=dict)
+    tripped: tuple[str, ...] = ()
 
 
 def adopting(remembered: Remembered) -> Callable[[Desk], Activity]:
@@ -43,7 +46,11 @@ def adopting(remembered: Remembered) -> Callable[[Desk], Activity]:
         desk.change(values=dict(remembered.values), outputs=dict(remembered.outputs), previous=remembered.previous)
         contents, gone = _contents(desk, remembered)
         desk.change(
-            contents=contents, claim=remembered.claim, pause=remembered.pause, measured=dict(remembered.measured)
+            contents=contents,
+            interlocks={name: InterlockState(tripped=name in remembered.tripped) for name in desk.wiring.gauges},
+            claim=remembered.claim,
+            pause=remembered.pause,
+            measured=dict(remembered.measured),
         )
         surveys = yield from look(desk)
         situation = desk.situation

@@ -8,6 +8,7 @@ from typing import Any
 
 from trapd.controller.activity import Activity, Pause
 from trapd.controller.desk import Desk
+from trapd.controller.interlocking import clearing, require_untripped
 from trapd.controller.precedence import claimed_by_another, paused
 from trapd.controller.situation import Claim, SchedulePause
 from trapd.controller.ticket import Ticket
@@ -81,6 +82,7 @@ IMMEDIATE: Mapping[str, Callable[[Desk, Ticket], Activity]] = {
     "release": releasing,
     "pause": pausing,
     "resume": resuming,
+    "clear": clearing,
 }
 """Requests that wait behind nothing."""
 
@@ -101,6 +103,7 @@ def require_allowed(desk: Desk, request: Request) -> None:
     refusal = claimed_by_another(situation.claim, request) or paused(situation.pause, request)
     if refusal is not None:
         raise refusal
+    require_untripped(desk, request)
 
 
 def _end_claim(desk: Desk, author: str, state: str, why: str) -> Activity:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import itertools
 import logging
 import threading
 from collections.abc import Callable
@@ -15,6 +14,7 @@ from trapd.controller.activity import Activity
 from trapd.controller.claiming import IMMEDIATE, drop_what_is_over, require_allowed, revoking
 from trapd.controller.desk import RETRY_S, Desk
 from trapd.controller.drafts import DAEMON, unregistered_drafts
+from trapd.controller.interlocking import running_down, watching
 from trapd.controller.kinds import ACTIVITIES
 from trapd.controller.looking import looking, no_longer_known
 from trapd.controller.mailbox import Mailbox, Urgency
@@ -22,8 +22,8 @@ from trapd.controller.off import retrying_off, silencing, switching_off
 from trapd.controller.precedence import gives_way, require_free, require_known
 from trapd.controller.running import Running
 from trapd.controller.situation import Situation
+from trapd.controller.stage import Stage
 from trapd.controller.ticket import Ticket
-from trapd.controller.timers import Timers
 from trapd.controller.waiting import Waiting
 from trapd.errors import Superseded, TrapdError
 from trapd.record import Draft
@@ -47,14 +47,12 @@ class Controller:
 
     def __init__(self, desk: Desk) -> None:
         self._desk = desk
-        desk.spawn = self._spawn
         self._mailbox = Mailbox()
+        self._stage = Stage(self._mailbox, desk.clock, self._ended)
+        desk.spawn = self._stage.spawn
         self._waiting = Waiting()
         self._current: Running | None = None
         self._current_request: Request | None = None
-        self._running: dict[int, Running] = {}
-        self._numbers = itertools.count()
-        self._timers = Timers(desk.clock)
         self._ending = False
         self._retrying_off = False
         self._next_off_ns = 0
@@ -99,8 +97,8 @@ class Controller:
     # Everything below runs on the controller's thread.
 
     def _run(self) -> None:
-        while not (self._ending and not self._running):
-            letter = self._mailbox.take(self._timers.patience_s(TICK_S))
+        while not (self._ending and not len(self._stage)):
+            letter = self._mailbox.take(self._stage.timers.patience_s(TICK_S))
             try:
                 if letter is not None:
                     letter.act()
@@ -121,7 +119,7 @@ class Controller:
 
     def _do_what_is_due(self) -> None:
         now_ns = self._desk.clock.monotonic_ns()
-        for act in self._timers.take_ready():
+        for act in self._stage.timers.take_ready():
             self._do(act)
         if self._desk.situation.contents.presence == "loading" and now_ns >= (self._desk.loading_until_ns or now_ns):
             no_longer_known(self._desk, "loading was not concluded in time")
@@ -136,7 +134,7 @@ class Controller:
         idle = self._current is None and self._offs == 0 and not self._ending and self._adopted
         if idle and now_ns >= self._next_look_ns:
             self._next_look_ns = now_ns + int(IDLE_LOOK_S * 1e9)
-            self._spawn(looking(self._desk))
+            self._stage.spawn(looking(self._desk))
         if now_ns >= self._next_heartbeat_ns and self._adopted and not self._ending:
             self._next_heartbeat_ns = now_ns + int(HEARTBEAT_S * 1e9)
             self._desk.note(Draft(kind="heartbeat", actor=DAEMON, data={"values": dict(self._desk.situation.values)}))
@@ -151,9 +149,11 @@ class Controller:
         def adopted(found: dict[str, Any]) -> None:
             self._adopted = True
             self._next_look_ns = self._desk.clock.monotonic_ns() + int(IDLE_LOOK_S * 1e9)
+            for name in self._desk.wiring.gauges:
+                self._stage.spawn(watching(self._desk, name, self._trip))
             future.set_result(found)
 
-        self._current = running = self._new(adoption(self._desk), adopted, future.set_exception)
+        self._current = running = self._stage.new(adoption(self._desk), adopted, future.set_exception)
         running.resume(None)
 
     def _off(self, ticket: Ticket) -> None:
@@ -171,17 +171,34 @@ class Controller:
             self._offs -= 1
             self._next_off_ns = self._desk.clock.monotonic_ns() + int(RETRY_S * 1e9)
             if self._desk.situation.claim is not None:
-                self._spawn(revoking(self._desk, ticket.request.author, "everything was switched off"))
+                self._stage.spawn(revoking(self._desk, ticket.request.author, "everything was switched off"))
             self._next()
 
         self._offs += 1
-        self._begin(switching_off(self._desk, ticket), finish, fail, to_the_end=True)
+        self._stage.begin(switching_off(self._desk, ticket), finish, fail, to_the_end=True)
+
+    def _trip(self, name: str) -> None:
+        """An interlock has tripped: what moves stops, and the action of the file follows."""
+        why = f"interlock {name} tripped"
+        self._supersede(why)
+        action = self._desk.config.interlocks[name].action
+        off = Ticket(Request(kind="off", author=DAEMON, why=why))
+        if action == "off":
+            self._off(off)
+        elif action == "ramp down":
+            self._offs += 1
+
+            def down(_: object) -> None:
+                self._offs -= 1
+                self._off(off)
+
+            self._stage.begin(running_down(self._desk, why), down, down, to_the_end=True)
 
     def _stop(self, ticket: Ticket) -> None:
         situation, busy, request = self._desk.situation, self._current is not None, ticket.request
         under_way = situation.moving or situation.scanning
         if situation.tickling and not situation.scanning:
-            self._spawn(silencing(self._desk, request.author, request.why), to_the_end=True)
+            self._stage.spawn(silencing(self._desk, request.author, request.why), to_the_end=True)
         self._supersede(f"{request.author} said stop")
         data = {"why": request.why, "request": under_way and under_way.request}
         self._desk.note(Draft(kind="halt", actor=request.author, data=data))
@@ -194,7 +211,7 @@ class Controller:
             require_known(self._desk.config, request)
             if request.kind in IMMEDIATE:
                 activity = IMMEDIATE[request.kind](self._desk, ticket)
-                self._begin(activity, ticket.finish, lambda error: self._fail(ticket, error))
+                self._stage.begin(activity, ticket.finish, lambda error: self._fail(ticket, error))
                 return
             require_free(running, request)
             self._waiting.add(ticket)
@@ -229,7 +246,7 @@ class Controller:
         activity = ACTIVITIES[ticket.request.kind](self._desk, ticket)
         # The slot is taken before the first step: an activity may end at once and ask for the next.
         self._current_request = ticket.request
-        self._current = running = self._new(activity, ticket.finish, lambda error: self._fail(ticket, error))
+        self._current = running = self._stage.new(activity, ticket.finish, lambda error: self._fail(ticket, error))
         running.resume(None)
 
     def _fail(self, ticket: Ticket, error: TrapdError) -> None:
@@ -252,55 +269,18 @@ class Controller:
     def _end(self) -> None:
         self._ending = True
         self._supersede("the daemon is stopping")
-        for running in [r for r in self._running.values() if not r.to_the_end]:
-            running.throw(Superseded("the daemon is stopping"))
+        self._stage.end_all("the daemon is stopping")
 
     def _retry_off(self) -> None:
         if self._desk.situation.off_pending and not self._retrying_off and not self._ending:
             self._retrying_off = True
-            self._begin(retrying_off(self._desk), lambda _: self._off_retried(), lambda _: self._off_retried())
+            self._stage.begin(retrying_off(self._desk), lambda _: self._off_retried(), lambda _: self._off_retried())
 
     def _off_retried(self) -> None:
         self._retrying_off = False
         self._next_off_ns = self._desk.clock.monotonic_ns() + int(RETRY_S * 1e9)
 
-    def _spawn(self, activity: Activity, *, to_the_end: bool = False) -> None:
-        self._begin(activity, lambda _: None, lambda _: None, to_the_end=to_the_end)
-
-    def schedule(self, seconds: float, act: Callable[[], None]) -> None:
-        self._timers.add(seconds, act)
-
-    def _begin(
-        self,
-        activity: Activity,
-        finish: Callable[[dict[str, Any]], None],
-        fail: Callable[[TrapdError], None],
-        *,
-        to_the_end: bool = False,
-    ) -> Running:
-        running = self._new(activity, finish, fail, to_the_end=to_the_end)
-        running.resume(None)
-        return running
-
-    def _new(
-        self,
-        activity: Activity,
-        finish: Callable[[dict[str, Any]], None],
-        fail: Callable[[TrapdError], None],
-        *,
-        to_the_end: bool = False,
-    ) -> Running:
-        number = next(self._numbers)
-        running = Running(self, number, activity, finish, fail, to_the_end)
-        self._running[number] = running
-        return running
-
-    def finished(self, running: Running) -> None:
-        self._running.pop(running.number, None)
+    def _ended(self, running: Running) -> None:
         if self._current is running:
             self._current = self._current_request = None
         self._next()
-
-    def post(self, act: Callable[[], None]) -> None:
-        """From any thread: something an activity waited for is there."""
-        self._mailbox.post(Urgency.STEP_DONE, act)

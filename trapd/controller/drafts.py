@@ -54,7 +54,7 @@ def contents_draft(contents: Contents, author: str, why: str) -> Draft:
     return Draft(kind="contents", actor=author, data={**asdict(contents), "why": why})
 
 
-def outcome_draft(author: str, intent: int, outcome: Outcome) -> Draft:
+def outcome_draft(author: str, intent: int | SameCommit, outcome: Outcome) -> Draft:
     return Draft(kind="outcome", actor=author, data={"intent": intent, **asdict(outcome)})
 
 

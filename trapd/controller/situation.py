@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
+from trapd.guard.interlock import InterlockState
 from trapd.setpoint import Contents, Due, Values
 
 
@@ -102,3 +103,4 @@ class Situation:
     pause: SchedulePause | None = None
     measured: Mapping[str, Measured] = field(default_factory=dict)
     tickling: bool = False
+    interlocks: Mapping[str, InterlockState] = field(default_factory=dict)

@@ -115,7 +115,7 @@ def _send(desk: Desk, origin: Origin, command: Command, intent: int) -> Part:
         # The command may be on its way: whatever comes of it is still written down, whenever it comes.
         desk.spawn(_late_outcome(desk, origin, command, intent, job, sent, str(error)), to_the_end=True)
         raise
-    _take(desk, command, carried)
+    take_over(desk, command, carried)
     return carried
 
 
@@ -128,7 +128,7 @@ def _late_outcome(
         desk.note(outcome_draft(origin.author, intent, Outcome(state="not sent", error=why)))
         return {}
     if desk.sent[command.intent.instrument] == sent:  # else something was sent after it, `off` perhaps
-        _take(desk, command, carried)
+        take_over(desk, command, carried)
     if carried.outcome.state not in ARRIVED:
         desk.change(doubt=(*desk.situation.doubt, f"{command.intent.setpoint}: {carried.outcome.error}"))
         desk.spawn(looking(desk))
@@ -136,7 +136,7 @@ def _late_outcome(
     return {}
 
 
-def _take(desk: Desk, command: Command, carried: Carried) -> None:
+def take_over(desk: Desk, command: Command, carried: Carried) -> None:
     """What this outcome says about the present state."""
     desk.rest(max(command.wait_s, command.settle_s), carried.at_ns)
     if carried.outcome.state not in ARRIVED:

@@ -15,6 +15,9 @@ from sqlalchemy.pool import NullPool, QueuePool
 
 from trapd.errors import RecordDamaged, RecordFailed, RecordUnwritable
 
+FOREIGN = (DBAPIError, sqlite3.Error, UnicodeDecodeError)
+"""What working with a file raises; the last for stored text, or a message of SQLite that quotes the file, not UTF-8."""
+
 _BUSY_TIMEOUT_S = 2.0
 _READ = {
     sqlite3.SQLITE_SELECT,
@@ -80,12 +83,15 @@ def reading_engine(path: Path, text: Callable[[bytes], str]) -> Engine:
 
 
 def failure(
-    error: sqlite3.Error | DBAPIError, path: Path, consequence: str, kind: type[RecordFailed] = RecordUnwritable
+    error: DBAPIError | sqlite3.Error | UnicodeDecodeError,
+    path: Path,
+    consequence: str,
+    kind: type[RecordFailed] = RecordUnwritable,
 ) -> RecordFailed:
-    """SQLite's error as ours, of ``kind`` unless the file is damaged. ``consequence`` says what did not happen."""
+    """One of `FOREIGN` as ours, of ``kind`` unless the file is damaged. ``consequence`` says what did not happen."""
     cause = error.orig if isinstance(error, DBAPIError) else error
     name = str(getattr(cause, "sqlite_errorname", ""))
-    if name.startswith(("SQLITE_NOTADB", "SQLITE_CORRUPT")):
+    if name.startswith(("SQLITE_NOTADB", "SQLITE_CORRUPT")) or isinstance(cause, UnicodeDecodeError):
         return RecordDamaged(f"{path} is not a sound SQLite file ({cause}); {consequence}")
     reasons = {
         "SQLITE_FULL": "the disk is full",

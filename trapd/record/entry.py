@@ -15,7 +15,7 @@ from datetime import UTC, datetime, timedelta
 from functools import lru_cache
 from typing import Any, NamedTuple
 
-from trapd.errors import Bug
+from trapd.errors import Bug, RecordDamaged
 from trapd.record.typed import TypedRow, typed_row
 
 KINDS = (
@@ -44,6 +44,7 @@ KINDS = (
     "secular_frequency",  # the frequency of a finding that found one; typed table `secular_frequencies`
     "due_run",  # what became of a time at which a scan was due; typed table `due_runs`
     "claim",  # somebody takes the trap for themselves, or gives it back
+    "interlock",  # what an interlock makes of its gauge (warned, tripped, unreadable); or a person cleared it
     "pause",  # somebody stops the schedule, or lets it go on
 )
 """The kinds in use. The record takes any other kind as well; `typed` says which have typed tables."""
@@ -221,8 +222,29 @@ def chain(parts: Sequence[Draft | Sealed], head: Head, stamp: Stamp) -> list[tup
 
 
 def entry_of(stored: Stored) -> Entry:
-    """The entry people see, from its row."""
-    return _entry(stored, json.loads(stored.body)["data"])
+    """The entry people see, from its row. Raises `RecordDamaged`."""
+    return _entry(stored, body_of(stored)["data"])
+
+
+def body_of(stored: Stored) -> dict[str, Any]:
+    """The parsed body. Raises `RecordDamaged` when it is no entry's."""
+    try:
+        return _parsed(stored.body)
+    except ValueError as error:
+        raise RecordDamaged(f"the record is damaged at entry {stored.seq}: {error}; nothing more was read") from error
+
+
+def _parsed(body: object) -> dict[str, Any]:
+    """Raises ValueError, which says why it is no entry's."""
+    if not isinstance(body, str):
+        raise ValueError("its body is no text")
+    try:
+        parsed = json.loads(body)
+    except (ValueError, RecursionError) as error:
+        raise ValueError("its body is not JSON") from error
+    if not isinstance(parsed, dict) or not isinstance(parsed.get("data"), dict):
+        raise ValueError("its body is not an entry")
+    return parsed
 
 
 def _entry(stored: Stored, data: Mapping[str, Any]) -> Entry:
@@ -243,14 +265,12 @@ def faults_of(stored: Stored, previous: Head) -> tuple[list[str], dict[str, Any]
     faults = []
     if stored.seq != previous.seq + 1:
         faults.append(f"follows entry {previous.seq}: {stored.seq - previous.seq - 1} missing between them")
-    if digest_of(stored.body.encode("utf-8", "surrogateescape")) != stored.digest:
+    if isinstance(stored.body, str) and digest_of(stored.body.encode("utf-8", "surrogateescape")) != stored.digest:
         faults.append("its digest is not that of its body: one of them was changed")
     try:
-        body = json.loads(stored.body)
-    except ValueError:
-        return [*faults, "its body is not JSON"], {}
-    if not isinstance(body, dict) or not isinstance(body.get("data"), dict):
-        return [*faults, "its body is not an entry"], {}
+        body = _parsed(stored.body)
+    except ValueError as error:
+        return [*faults, str(error)], {}
     if body.get("previous") != previous.digest:
         faults.append(f"its previous digest is not that of entry {previous.seq}")
     faults += [

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import csv
-import json
 from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any, TextIO
@@ -12,7 +11,7 @@ from sqlalchemy import Connection, Table, select
 
 from trapd.errors import BadRequest
 from trapd.record.ask import Reader
-from trapd.record.entry import canonical
+from trapd.record.entry import Stored, body_of, canonical
 from trapd.record.tables import due_times, entries, frequencies, scan_points, scans, setpoints
 
 _ROWS = 1000
@@ -46,8 +45,8 @@ def _csv(connection: Connection, out: TextIO, table: Table | None) -> int:
 
 def _jsonl(connection: Connection, out: TextIO, table: Table | None) -> int:
     if table is None:
-        query = select(entries.c.body, entries.c.digest).order_by(entries.c.seq)
-        lines = ({**json.loads(body), "digest": digest} for body, digest in _rows(connection, query))
+        stored = (Stored(*row) for row in _rows(connection, select(entries).order_by(entries.c.seq)))
+        lines = ({**body_of(one), "digest": one.digest} for one in stored)
     else:
         lines = (dict(row._mapping) for row in _rows(connection, select(table).order_by(table.c.seq)))
     return _count(out.write(canonical(line) + "\n") for line in lines)

@@ -11,10 +11,9 @@ from pathlib import Path
 from typing import Any, cast
 
 from sqlalchemy import Connection, select
-from sqlalchemy.exc import DBAPIError
 
 from trapd.errors import Locked, RecordDamaged, RecordFailed, RecordUnwritable
-from trapd.record.connection import failure, migrating_engine, writing_engine
+from trapd.record.connection import FOREIGN, failure, migrating_engine, writing_engine
 from trapd.record.entry import NO_DIGEST, Head, Stored, faults_of
 from trapd.record.schema import SCHEMA, migrate, schema_of
 from trapd.record.tables import INSERTS, entries
@@ -56,7 +55,7 @@ class RecordFile:
                 connection.rollback()
                 if current != SCHEMA:
                     migrate(connection)
-        except (DBAPIError, sqlite3.Error) as error:
+        except FOREIGN as error:
             raise failure(error, self.path, NOTHING) from error
         self.connect()
 
@@ -67,7 +66,7 @@ class RecordFile:
             self._driver = cast(sqlite3.Connection, self._connection.connection.driver_connection)
             self.head = read_head(self._connection, self.head)
             self._connection.rollback()
-        except (DBAPIError, sqlite3.Error) as error:
+        except FOREIGN as error:
             self.disconnect()
             raise failure(error, self.path, NOTHING) from error
         except RecordFailed:
@@ -102,7 +101,7 @@ class RecordFile:
             if _OUT_OF_TURN in str(error):
                 raise RecordUnwritable(f"{self.path}: another program wrote to it; {NOTHING}") from error
             raise
-        except sqlite3.Error as error:
+        except FOREIGN as error:
             self.disconnect()
             raise failure(error, self.path, NOTHING) from error
         self.head = head

@@ -2,17 +2,15 @@
 
 from __future__ import annotations
 
-import sqlite3
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
 from typing import Any, Self
 
 from sqlalchemy import Column, Connection, Engine, Select, Table
-from sqlalchemy.exc import DBAPIError
 
 from trapd.errors import NotFound, RecordFailed
-from trapd.record.connection import failure, reading_engine
+from trapd.record.connection import FOREIGN, failure, reading_engine
 from trapd.record.schema import demand_current
 
 MANY = 1000
@@ -59,7 +57,7 @@ class OpenRecord:
         try:
             with self._engine.connect() as connection:
                 yield connection
-        except (DBAPIError, sqlite3.Error) as error:
+        except FOREIGN as error:
             raise failure(error, self.path, "nothing more was read", RecordFailed) from error
 
     def page(self, query: Select[Any], table: Table, limit: int, newest: bool) -> list[Any]:

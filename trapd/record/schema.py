@@ -7,7 +7,7 @@ from pathlib import Path
 from sqlalchemy import Connection
 
 import trapd
-from trapd.errors import ConfigError
+from trapd.errors import ConfigError, RecordDamaged
 
 SCHEMA = "0002"
 """The newest migration: what this trapd reads and writes."""
@@ -17,7 +17,8 @@ APPLICATION_ID = 1953653104
 
 
 def schema_of(connection: Connection, path: Path) -> str | None:
-    """The file's schema, None for an empty file. Raises `ConfigError` for a file that is no record of ours."""
+    """The file's schema, None for an empty file. Raises `ConfigError` for a file that is no record of ours,
+    `RecordDamaged` for one that does not say which schema it has."""
     application = connection.exec_driver_sql("PRAGMA application_id").scalar_one()
     tables = connection.exec_driver_sql("SELECT count(*) FROM sqlite_schema").scalar_one()
     if application == 0 and tables == 0:
@@ -27,7 +28,10 @@ def schema_of(connection: Connection, path: Path) -> str | None:
             f"{path} is a database of another program (application id {application}, expected {APPLICATION_ID}); "
             "nothing was changed"
         )
-    schema = str(connection.exec_driver_sql("SELECT version_num FROM alembic_version").scalar_one())
+    schemas = connection.exec_driver_sql("SELECT version_num FROM alembic_version").scalars().all()
+    if len(schemas) != 1:
+        raise RecordDamaged(f"{path} names {len(schemas)} schemas, expected one; nothing was changed")
+    schema = str(schemas[0])
     if schema > SCHEMA:
         raise ConfigError(
             f"{path} was written by a newer trapd (schema {schema}, this one knows {SCHEMA}); nothing was changed"

@@ -1,7 +1,8 @@
 """Reading what a SCPI instrument answers: numbers, identities, error queue entries. Pure text in, values out.
 
 Formats: IEEE 488.2-1992 8.7.2 to 8.7.4 (NR1, NR2, NR3), 10.14 (``*IDN?``: four fields); SCPI-1999 volume 1, 7.2.1
-(9.9E37 is infinity, 9.91E37 not a number), volume 2, 21.8 (``SYSTem:ERRor?``: number, "text"). [mem]
+(9.9E37 is infinity, 9.91E37 not a number), volume 2, 21.8 (``SYSTem:ERRor?``: number from -32768 to 32767, "text").
+[mem]
 """
 
 from __future__ import annotations
@@ -12,7 +13,7 @@ from trapd_drivers.errors import Malformed
 from trapd_drivers.interfaces import Identity
 
 _NUMBER = re.compile(r"[+-]?(\d+(\.\d*)?|\.\d+)([Ee][+-]?\d+)?", re.ASCII)
-_ERROR = re.compile(r'([+-]?\d+)\s*,\s*"(.*)"', re.ASCII)
+_ERROR = re.compile(r'([+-]?\d{1,9})\s*,\s*"(.*)"', re.ASCII)
 _LARGEST = 9.9e37
 _SIMULATED = "TRAPD SIMULATED"
 

@@ -65,7 +65,14 @@ class Session:
 
     def read_number(self, reading: Reading, *, query: Form | None = None, channel: int = 0) -> float:
         """The SI value that the reading's query tells, or another ``query`` with replies of the same kind."""
-        return reading.unit.to_si(self._ask(query or reading.query, reading.reply, channel, answers.number))
+
+        def in_si(text: str) -> float:
+            try:
+                return reading.unit.to_si(answers.number(text))
+            except ValueError as error:
+                raise Malformed(str(error)) from error
+
+        return self._ask(query or reading.query, reading.reply, channel, in_si)
 
     def read_gauge(self, reading: Reading) -> float:
         """As `read_number`, of an instrument that may answer SCPI's not-a-number: `InstrumentRefused`."""

@@ -24,6 +24,7 @@ DRIVERS = {
     "dc": "scpi-dc-supply",
     "tickle": "scpi-rf-source",
     "counter": "scpi-photon-counter",
+    "vacuum": "scpi-gauge",
 }
 
 
