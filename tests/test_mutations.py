@@ -16,7 +16,7 @@ ROOT = Path(__file__).resolve().parent.parent
 COPIED = ("trapd", "drivers", "migrations", "tests", "pyproject.toml", "README.md", "DEVELOPERS.md")
 
 
-@pytest.fixture(scope="module")
+@pytest.fixture(scope="class")
 def copy(tmp_path_factory: pytest.TempPathFactory) -> Path:
     folder = tmp_path_factory.mktemp("mutant")
     for name in COPIED:
@@ -27,9 +27,34 @@ def copy(tmp_path_factory: pytest.TempPathFactory) -> Path:
     return folder
 
 
+def _third(number: int) -> pytest.MarkDecorator:
+    return pytest.mark.parametrize("mutation", MUTATIONS[number::3], ids=lambda one: one.name.replace(" ", "_"))
+
+
 @pytest.mark.long
-@pytest.mark.parametrize("mutation", MUTATIONS, ids=lambda one: one.name.replace(" ", "_"))
-def test_a_deliberate_mistake_is_caught(copy: Path, mutation: Mutation) -> None:
+class TestFirstThird:
+    """Three classes, so that three processes can share the work."""
+
+    @_third(0)
+    def test_a_deliberate_mistake_is_caught(self, copy: Path, mutation: Mutation) -> None:
+        _must_be_caught(copy, mutation)
+
+
+@pytest.mark.long
+class TestSecondThird:
+    @_third(1)
+    def test_a_deliberate_mistake_is_caught(self, copy: Path, mutation: Mutation) -> None:
+        _must_be_caught(copy, mutation)
+
+
+@pytest.mark.long
+class TestLastThird:
+    @_third(2)
+    def test_a_deliberate_mistake_is_caught(self, copy: Path, mutation: Mutation) -> None:
+        _must_be_caught(copy, mutation)
+
+
+def _must_be_caught(copy: Path, mutation: Mutation) -> None:
     source = copy / mutation.file
     original = source.read_text(encoding="utf-8")
     assert original.count(mutation.old) == 1, f"{mutation.file} no longer reads as this mutation expects"

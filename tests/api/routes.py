@@ -40,6 +40,7 @@ ROUTES = [
     Route("GET", "/v1/frequencies", "read"),
     Route("GET", "/v1/due", "read"),
     Route("POST", "/v1/claim", "operate", {"why": WHY, "until": PAST}),
+    Route("POST", "/v1/clear", "operate", {"interlock": "nowhere", "why": WHY}),
     Route("POST", "/v1/release", "operate", {}),
     Route("POST", "/v1/pause", "operate", {"why": WHY, "until": PAST}),
     Route("POST", "/v1/resume", "operate", {}),

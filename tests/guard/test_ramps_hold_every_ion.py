@@ -22,7 +22,7 @@ from trapd.guard import rules
 from trapd.guard.verdict import judge_move
 from trapd.setpoint import Ramp, Reason
 
-DRAWS = int(os.environ.get("TRAPD_RAMPS", "500"))
+DRAWS = int(os.environ.get("TRAPD_RAMPS", "300"))
 SEED = int(os.environ.get("TRAPD_RAMPS_SEED", "20240611"))
 WINDOW_RULES = {rules.STABILITY, rules.MARGIN, rules.PATH}
 GROWS = 1 + 1e-5  # per period; eigenvalues that meet on the unit circle are good to the root of the integrator's 1e-10
