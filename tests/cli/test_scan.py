@@ -26,6 +26,7 @@ from trapd.errors import NotConfirmed, Superseded, TrapdError
 TWO_SCANS = SCANNED + (
     '[scans.shallow]\nmode = "x"\ntickle = "0.5 mV"\nspan = "60 kHz"\ndwell = "5 ms"\ntarget = "100 Hz"\n'
     'min_contrast = "50 %"\npasses = 2\n'
+    '[scans.endless]\nmode = "x"\ntickle = "0.5 mV"\nspan = "60 kHz"\ndwell = "20 ms"\ntarget = "0.1 Hz"\npasses = 300\n'
 )
 
 
@@ -139,7 +140,7 @@ def test_a_figure_goes_into_a_new_file(running: RunningTrap, tmp_path: Path) -> 
 @pytest.mark.parametrize(
     ("line", "said"),
     [
-        ("scan y", '"y" is no scan of this trap; there are: x, shallow; nothing was sent'),
+        ("scan y", '"y" is no scan of this trap; there are: x, shallow, endless; nothing was sent'),
         ("scan x -o x.png", "expected a name that ends in .svg; nothing was sent"),
         ("scan x -o {}/there.svg", "exists already; nothing was sent"),
         ("scan x -o {}/nowhere/x.svg", "is in no folder that exists; nothing was sent"),
@@ -167,7 +168,7 @@ def test_a_trap_file_without_scans_is_said(running: RunningTrap, monkeypatch: py
 
 def test_ctrl_c_stops_the_scan_and_says_so(running: RunningTrap, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(Client, "wait_finding", Mock(side_effect=KeyboardInterrupt))
-    ended = trapd(running, "scan x --json")
+    ended = trapd(running, "scan endless --json")
     assert ended.code == 130
     assert ended.err.strip() == "the scan was stopped, its tickle goes off; every output holds"
     assert (ended.json["state"], ended.json["finding"], ended.json["error"]) == ("stopped", None, ended.err.strip())
