@@ -62,9 +62,13 @@ def _previous(reader: Reader) -> dict[str, float] | None:
     return None
 
 
+def _newest(reader: Reader, kind: str) -> Entry | None:
+    return next(iter(reader.entries(kind=kind, newest=True, limit=1)), None)
+
+
 def _open_scan(reader: Reader) -> int | None:
     """The entry of the newest scan, if nothing says how it ended."""
-    plan = next(iter(reader.entries(kind="plan", newest=True, limit=1)), None)
+    plan = _newest(reader, "plan")
     if plan is None:
         return None
     request: int = plan.data["request"]
@@ -73,14 +77,14 @@ def _open_scan(reader: Reader) -> int | None:
 
 
 def _claim(reader: Reader) -> Claim | None:
-    newest = next(iter(reader.entries(kind="claim", newest=True, limit=1)), None)
+    newest = _newest(reader, "claim")
     if newest is None or newest.data["state"] != "claimed":
         return None
     return Claim(entry=newest.seq, who=newest.data["who"], why=newest.data["why"], until_us=newest.data["until_us"])
 
 
 def _pause(reader: Reader) -> SchedulePause | None:
-    newest = next(iter(reader.entries(kind="pause", newest=True, limit=1)), None)
+    newest = _newest(reader, "pause")
     if newest is None or newest.data["state"] != "paused":
         return None
     return SchedulePause(entry=newest.seq, who=newest.actor, why=newest.data["why"], until_us=newest.data["until_us"])

@@ -184,44 +184,49 @@ class TokenBody(Body):
     role: Role
 
 
-class AskedEntries(Asked):
+class AskedPage(Asked):
     """In order, the newest last: those after ``after``, or without it the last ones."""
 
     after: Seq | None = None
     limit: Limit = 100
-    kind: Name | None = None
-    actor: Name | None = None
     since: Time | None = None
     until: Time | None = None
 
+    def as_question(self) -> dict[str, Any]:
+        """As the questions of `Reader` take it, what narrows the listing included."""
+        page = {"after": self.after or 0, "newest": self.after is None, "limit": self.limit}
+        narrowed = self.model_dump(exclude={"after", "limit", "since", "until"})
+        return {**page, "since_us": self.since, "until_us": self.until, **narrowed}
 
-class AskedSetpoints(Asked):
-    after: Seq | None = None
-    limit: Limit = 100
+
+class AskedEntries(AskedPage):
+    kind: Name | None = None
+    actor: Name | None = None
+
+
+class AskedSetpoints(AskedPage):
     setpoint: Name | None = None
     state: Name | None = None
     who: Name | None = None
-    since: Time | None = None
-    until: Time | None = None
 
 
-class AskedFrequencies(Asked):
-    after: Seq | None = None
-    limit: Limit = 100
+class AskedFrequencies(AskedPage):
     scan: Name | None = None
     species: Name | None = None
     mode: Literal["x", "y", "z"] | None = None
-    since: Time | None = None
-    until: Time | None = None
 
 
-class AskedDue(Asked):
-    after: Seq | None = None
-    limit: Limit = 100
+class AskedScans(AskedPage):
+    """Of those made."""
+
+    scan: Name | None = None
+    state: Name | None = None
+    who: Name | None = None
+
+
+class AskedDue(AskedPage):
     schedule: Name | None = None
     state: Literal["run", "late", "skipped", "missed"] | None = None
-    since: Time | None = None
-    until: Time | None = None
 
 
 class AskedState(Asked):

@@ -91,15 +91,7 @@ def record_routes(service: Service, reader: Reader, viewers: Viewers) -> APIRout
 
     @router.get("/v1/entries", summary="Entries of the record, the newest last")
     def entries(caller: Reading, asked: Annotated[AskedEntries, Query()]) -> Answer:
-        found = reader.entries(
-            after=asked.after or 0,
-            newest=asked.after is None,
-            limit=asked.limit,
-            kind=asked.kind,
-            actor=asked.actor,
-            since_us=asked.since,
-            until_us=asked.until,
-        )
+        found = reader.entries(**asked.as_question())
         return Answer({"entries": [answers.entry(one) for one in found], "last_seq": service.record.last_seq})
 
     @router.get("/v1/entries/{seq}", summary="One entry of the record")
@@ -108,16 +100,7 @@ def record_routes(service: Service, reader: Reader, viewers: Viewers) -> APIRout
 
     @router.get("/v1/setpoints", summary="What was sent and what came of it, the newest last")
     def setpoints(caller: Reading, asked: Annotated[AskedSetpoints, Query()]) -> Answer:
-        found = reader.setpoints(
-            after=asked.after or 0,
-            newest=asked.after is None,
-            limit=asked.limit,
-            setpoint=asked.setpoint,
-            state=asked.state,
-            who=asked.who,
-            since_us=asked.since,
-            until_us=asked.until,
-        )
+        found = reader.setpoints(**asked.as_question())
         return Answer({"setpoints": [answers.commanded(one) for one in found]})
 
     @router.get("/v1/state", summary="What had been commanded by an entry or by a time")

@@ -9,7 +9,7 @@ from fastapi import Request as HttpRequest
 
 from trapd.api.access import Operating, Reading
 from trapd.api.answers import Answer, entry, plain, timed
-from trapd.api.bodies import Asked, AskedDue, AskedFrequencies, Limit, Name, ScanBody, Seq, Time
+from trapd.api.bodies import AskedDue, AskedFrequencies, AskedScans, ScanBody, Seq
 from trapd.api.moves import begun
 from trapd.api.service import Service, upcoming
 from trapd.errors import NotFound
@@ -17,18 +17,6 @@ from trapd.record import Entry, Reader
 from trapd.setpoint import Request
 
 _MANY = 1000
-
-
-class AskedScans(Asked):
-    """Of those made: in order, the newest last; those after ``after``, or without it the last ones."""
-
-    after: Seq | None = None
-    limit: Limit = 100
-    scan: Name | None = None
-    state: Name | None = None
-    who: Name | None = None
-    since: Time | None = None
-    until: Time | None = None
 
 
 def routes(service: Service, reader: Reader) -> APIRouter:
@@ -42,17 +30,9 @@ def routes(service: Service, reader: Reader) -> APIRouter:
 
     @router.get("/v1/scans", summary="The scans of the trap file, each with its newest finding; and those made")
     def scans(caller: Reading, asked: Annotated[AskedScans, Query()]) -> Answer:
-        listed = [{**plain(one), "finding": _newest(reader, name)} for name, one in service.config.scans.items()]
-        made = reader.scans(
-            after=asked.after or 0,
-            newest=asked.after is None,
-            limit=asked.limit,
-            scan=asked.scan,
-            state=asked.state,
-            who=asked.who,
-            since_us=asked.since,
-            until_us=asked.until,
-        )
+        newest = {one.data["scan"]: one for one in reader.entries(kind="finding", newest=True, limit=_MANY)}
+        listed = [{**plain(one), "finding": _data(newest.get(name))} for name, one in service.config.scans.items()]
+        made = reader.scans(**asked.as_question())
         return Answer({"scans": listed, "made": [timed(one, one.time_us) for one in made]})
 
     @router.get("/v1/scans/{seq}", summary="One scan by the entry of its request: plan, points, estimate, finding")
@@ -61,37 +41,15 @@ def routes(service: Service, reader: Reader) -> APIRouter:
 
     @router.get("/v1/frequencies", summary="The secular frequencies that were measured, the newest last")
     def frequencies(caller: Reading, asked: Annotated[AskedFrequencies, Query()]) -> Answer:
-        found = reader.secular_frequencies(
-            after=asked.after or 0,
-            newest=asked.after is None,
-            limit=asked.limit,
-            scan=asked.scan,
-            species=asked.species,
-            mode=asked.mode,
-            since_us=asked.since,
-            until_us=asked.until,
-        )
+        found = reader.secular_frequencies(**asked.as_question())
         return Answer({"frequencies": [timed(one, one.at_us) for one in found]})
 
     @router.get("/v1/due", summary="What the schedule did, the newest last; and what it does next")
     def due(caller: Reading, asked: Annotated[AskedDue, Query()]) -> Answer:
-        found = reader.due_runs(
-            after=asked.after or 0,
-            newest=asked.after is None,
-            limit=asked.limit,
-            schedule=asked.schedule,
-            state=asked.state,
-            since_us=asked.since,
-            until_us=asked.until,
-        )
+        found = reader.due_runs(**asked.as_question())
         return Answer({"due": [timed(one, one.due_us) for one in found], "upcoming": upcoming(service)})
 
     return router
-
-
-def _newest(reader: Reader, scan: str) -> dict[str, Any] | None:
-    found = [one.finding for one in reader.scans(scan=scan, newest=True) if one.finding is not None]
-    return _data(reader.entry(found[-1])) if found else None
 
 
 def _told(reader: Reader, seq: int) -> dict[str, Any]:

@@ -15,7 +15,7 @@ from trapd.guard.tickle import judge_tickle
 from trapd.guard.verdict import judge
 from trapd.scans.plan import Plan, plan_scan
 from trapd.scans.prediction import predictions
-from trapd.setpoint import Contents, Values, Verdict
+from trapd.setpoint import Contents, Request, Values, Verdict
 
 LEAST_SHOTS, LEAST_COUNTS = 3, 30
 """Counts with the tickle off before anything is emitted (somebody must be home), and whenever they fall under the floor:
@@ -26,9 +26,18 @@ def section_of(desk: Desk, name: str | None) -> tuple[ScanSection, CounterSectio
     """What the trap file says of the scan and of the counter."""
     scans, counter = desk.config.scans, desk.config.counter
     if name is None or name not in scans or counter is None:
-        known = f"there are: {', '.join(scans)}" if scans else "it has no [scans]"
-        raise NotFound(f"no scan {name!r} in the trap file; {known}; nothing was sent")
+        there_are = f"there are: {', '.join(scans)}" if scans else "there is none"
+        raise NotFound(f"no scan {name!r} in the trap file; {there_are}; nothing was sent")
     return scans[name], counter
+
+
+def require_known(desk: Desk, request: Request) -> None:
+    """`NotFound` or `BadRequest` for a name that is none: what cannot be stops nothing that runs."""
+    desk.require_setpoints(request.values)
+    if request.point is not None:
+        desk.point(request.point)
+    if request.scan is not None:
+        section_of(desk, request.scan)
 
 
 def require_held(desk: Desk, section: ScanSection) -> str:

@@ -11,6 +11,7 @@ from dataclasses import replace
 from typing import Any
 
 from trapd.controller.activity import Activity
+from trapd.controller.aiming import require_known
 from trapd.controller.claiming import IMMEDIATE, drop_what_is_over, require_allowed, revoking
 from trapd.controller.desk import RETRY_S, Desk
 from trapd.controller.drafts import DAEMON, unregistered_drafts
@@ -19,7 +20,7 @@ from trapd.controller.kinds import ACTIVITIES
 from trapd.controller.looking import looking, no_longer_known
 from trapd.controller.mailbox import Mailbox, Urgency
 from trapd.controller.off import retrying_off, silencing, switching_off
-from trapd.controller.precedence import gives_way, require_free, require_known
+from trapd.controller.precedence import gives_way, require_free
 from trapd.controller.running import Running
 from trapd.controller.situation import Situation
 from trapd.controller.stage import Stage
@@ -208,7 +209,7 @@ class Controller:
         request, running = ticket.request, self._current_request
         try:
             self._require_allowed(request)
-            require_known(self._desk.config, request)
+            require_known(self._desk, request)
             if request.kind in IMMEDIATE:
                 activity = IMMEDIATE[request.kind](self._desk, ticket)
                 self._stage.begin(activity, ticket.finish, lambda error: self._fail(ticket, error))

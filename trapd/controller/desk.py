@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import logging
 from collections import deque
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from concurrent.futures import Executor, Future
 from dataclasses import dataclass, field, replace
 from typing import Any, Protocol
@@ -156,6 +156,12 @@ class Desk:
         self.spawn(whole(), to_the_end=True)
         return (yield ended)
 
+    def require_setpoints(self, names: Iterable[str]) -> None:
+        """`BadRequest` for one that the trap does not have."""
+        unknown = [name for name in names if name not in self.model.limits]
+        if unknown:
+            raise BadRequest(f"no setpoint {unknown[0]!r}; there are: {', '.join(self.model.limits)}; nothing was sent")
+
     def point(self, name: str | None) -> Mapping[str, float]:
         """A named operating point; the first of the file when no name is given."""
         points = self.config.points
@@ -164,7 +170,8 @@ class Desk:
                 raise BadRequest("the trap file has no [points]; name the setpoints instead; nothing was sent")
             return next(iter(points.values()))
         if name not in points:
-            raise NotFound(f"no point {name!r} in the trap file; there are: {', '.join(points)}; nothing was sent")
+            there_are = f"there are: {', '.join(points)}" if points else "there is none"
+            raise NotFound(f"no point {name!r} in the trap file; {there_are}; nothing was sent")
         return points[name]
 
     def _keep(self, done: Future[tuple[Entry, ...]], drafts: Sequence[Draft], happened_us: int) -> None:

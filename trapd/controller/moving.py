@@ -46,9 +46,7 @@ def target_of(desk: Desk, request: Request) -> dict[str, float]:
         asked = desk.point(request.point)
     else:
         asked = request.values
-    unknown = [name for name in asked if name not in desk.model.limits]
-    if unknown:
-        raise BadRequest(f"no setpoint {unknown[0]!r}; there are: {', '.join(desk.model.limits)}; nothing was sent")
+    desk.require_setpoints(asked)
     if not asked:
         raise BadRequest("no setpoint was named; nothing was sent")
     target = realised(desk.model, {**situation.values, **asked})

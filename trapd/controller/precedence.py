@@ -2,10 +2,8 @@
 
 from __future__ import annotations
 
-from trapd.config.build import setpoints_of
-from trapd.config.records import Config
 from trapd.controller.situation import Claim, SchedulePause
-from trapd.errors import BadRequest, Conflict, NotFound
+from trapd.errors import Conflict
 from trapd.setpoint import Request
 
 _OVER_CLAIMS = ("claim", "set", "go", "back", "on", "empty", "ions", "scan")
@@ -26,17 +24,6 @@ def paused(pause: SchedulePause | None, request: Request) -> Conflict | None:
     if pause is None or request.due is None:
         return None
     return Conflict(f"{request.kind}: {pause.who} paused the schedule ({pause.why}); nothing was sent")
-
-
-def require_known(config: Config, request: Request) -> None:
-    """`NotFound` or `BadRequest` for a name that is none: what cannot be stops nothing that runs."""
-    unknown = [name for name in request.values if name not in setpoints_of(config)]
-    if unknown:
-        raise BadRequest(f"no setpoint {unknown[0]!r}; there are: {', '.join(setpoints_of(config))}; nothing was sent")
-    for what, name, known in (("point", request.point, config.points), ("scan", request.scan, config.scans)):
-        if name is not None and name not in known:
-            there_are = f"there are: {', '.join(known)}" if known else "there is none"
-            raise NotFound(f"no {what} {name!r} in the trap file; {there_are}; nothing was sent")
 
 
 def gives_way(running: Request | None, request: Request) -> bool:

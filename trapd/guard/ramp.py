@@ -19,9 +19,9 @@ def leg_steps(model: GuardModel, values: Values, setpoint: str, target: float) -
     limit = model.limits[setpoint]
     start = values[setpoint]
     quantum = resolution(model, values, setpoint)
-    # Rounding moves either end by half a quantum. Where that leaves next to nothing, half of one does: two neighbours
-    # are then one quantum apart at most.
-    largest = max(limit.step - quantum, quantum / 2) if quantum < limit.step else limit.step
+    # Rounding moves either end by half a quantum. Where that leaves next to nothing, or less, half of one does: two
+    # neighbours are then one quantum apart at most.
+    largest = max(limit.step - quantum, quantum / 2)
     count = max(1, math.ceil(abs(target - start) / largest * (1 - 1e-12)))
     steps = []
     last = start

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
 from math import copysign
 
 from trapd.guard import rules
@@ -38,9 +37,6 @@ def _least(model: GuardModel, values: Values, name: str) -> float:
 
 
 def _leg(model: GuardModel, values: Values, name: str, end: float) -> list[Step]:
-    limit, quantum = model.limits[name], resolution(model, values, name)
-    if 2 * quantum > limit.step:  # only one of the instrument's own steps fits into the file's, if any
-        model = replace(model, limits={**model.limits, name: replace(limit, step=quantum)})
     return leg_steps(model, {**values, name: _programmable(model, values, name, end)}, name, end)
 
 
